@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from types import MappingProxyType
 from typing import Any
 
@@ -49,7 +49,7 @@ class Part:
     polarity: int = 1
     count: int = 1
     model: str = ""
-    parameters: Mapping[str, Any] = MappingProxyType({})
+    parameters: Mapping[str, Any] = field(default_factory=lambda: MappingProxyType({}))
     rated_volts: float | None = None
     tolerance: float | None = None
 
