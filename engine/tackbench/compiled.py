@@ -1,0 +1,143 @@
+"""Compiled functions: numba loaded late, its cache put where the user may write, one explicit signature each.
+
+numba keys its cache by the text of one file only, trusts what it finds there, and fails at import time where neither
+the package nor the home folder may be written. So the cache folder is chosen here before numba is first imported:
+it is named after the package's version and the text of every file that holds compiled code, and is thrown away and
+made anew when it turns out to be damaged.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import os
+import shutil
+import sys
+import tempfile
+import time
+from collections.abc import Callable
+from functools import cache
+from pathlib import Path
+from typing import Any
+
+from tackbench import __version__
+
+_STATE = {"seconds": 0.0}
+_REGISTERED: set[Callable[..., Any]] = set()
+
+
+def user_cache_folder() -> Path:
+    """The folder for what may be made again: the platform's per-user cache folder, under ``tackbench``."""
+    chosen = os.environ.get("TACKBENCH_CACHE")
+    if chosen:
+        return Path(chosen)
+    if sys.platform == "win32":
+        base = Path(os.environ.get("LOCALAPPDATA") or Path.home() / "AppData" / "Local")
+    elif sys.platform == "darwin":
+        base = Path.home() / "Library" / "Caches"
+    else:
+        base = Path(os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache")
+    return base / "tackbench"
+
+
+def _source_hash() -> str:
+    """A hash over every source file of the package, so that no compiled code outlives the text it came from."""
+    digest = hashlib.sha256()
+    root = Path(__file__).parent
+    for path in sorted(root.rglob("*.py")):
+        text = path.read_bytes()
+        if b"njit_cached" in text:
+            digest.update(path.relative_to(root).as_posix().encode())
+            digest.update(text)
+    return digest.hexdigest()[:16]
+
+
+def _may_write(folder: Path) -> bool:
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        with tempfile.TemporaryFile(dir=folder):
+            return True
+    except OSError:
+        return False
+
+
+@cache
+def compiled_code_folder() -> Path:
+    """Where compiled code of exactly this source is kept; a temporary folder when no lasting one may be written."""
+    folder = user_cache_folder() / "compiled" / f"{__version__}-{_source_hash()}"
+    if not _may_write(folder):
+        folder = Path(tempfile.mkdtemp(prefix="tackbench-compiled-"))
+    os.environ["NUMBA_CACHE_DIR"] = str(folder)
+    if "numba" in sys.modules:  # somebody imported it before us: tell it directly
+        sys.modules["numba"].config.CACHE_DIR = str(folder)
+    return folder
+
+
+def kernels_are_cached() -> bool:
+    """True when compiled code is already there, so that a first use will not have to compile."""
+    return any(compiled_code_folder().rglob("*.nbc"))
+
+
+def seconds_spent_compiling() -> float:
+    """Seconds that this process has spent on getting compiled functions ready so far."""
+    return _STATE["seconds"]
+
+
+def njit_cached(
+    signature: str, inner: tuple[Callable[..., Any], ...] = (), **options: Any
+) -> Callable[[Callable[..., Any]], Any]:
+    """Decorate a function to be compiled on its first call with exactly this signature, cached, without the GIL.
+
+    ``inner`` lists plain functions that it calls, innermost first; they are compiled into it. No fast-math: the same
+    samples come out whatever the block size or thread.
+    """
+
+    def decorate(function: Callable[..., Any]) -> Any:
+        return _LateFunction(function, signature, inner, options)
+
+    return decorate
+
+
+class _LateFunction:
+    """A function that is compiled when it is first called."""
+
+    def __init__(
+        self,
+        function: Callable[..., Any],
+        signature: str,
+        inner: tuple[Callable[..., Any], ...],
+        options: dict[str, Any],
+    ) -> None:
+        self.plain, self._signature, self._inner, self._options = function, signature, inner, options
+        self._compiled: Callable[..., Any] | None = None
+        self.__doc__, self.__name__ = function.__doc__, function.__name__
+
+    def ready(self) -> Callable[..., Any]:
+        """The compiled function, compiled or loaded from the cache now if it has not been."""
+        if self._compiled is None:
+            began = time.perf_counter()
+            self._compiled = self._compile()
+            _STATE["seconds"] += time.perf_counter() - began
+        return self._compiled
+
+    def _compile(self) -> Callable[..., Any]:
+        folder = compiled_code_folder()
+        import numba
+        from numba.extending import register_jitable
+
+        for function in self._inner:
+            if function not in _REGISTERED:
+                register_jitable(function)
+                _REGISTERED.add(function)
+        make = numba.njit(self._signature, cache=True, nogil=True, **self._options)
+        try:
+            compiled: Callable[..., Any] = make(self.plain)
+        except (EOFError, TypeError, ValueError, AttributeError, ImportError, OSError) as trouble:
+            if isinstance(trouble, (TypeError, ValueError)) and not any(folder.rglob("*.nb?")):
+                raise
+            shutil.rmtree(folder, ignore_errors=True)  # a damaged cache is rebuilt, never trusted
+            folder.mkdir(parents=True, exist_ok=True)
+            compiled = make(self.plain)
+        return compiled
+
+    def __call__(self, *arguments: Any) -> Any:
+        return self.ready()(*arguments)
