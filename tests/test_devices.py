@@ -43,7 +43,8 @@ def test_statements_equal_the_law_and_slopes_equal_a_complex_step(number):
             step = c.astype(complex)
             step[column] += 1e-40j
             slope = np.imag(np.array(law.function(NUMBERS, step, CONSTANTS[law.name]))) / 1e-40
-            np.testing.assert_allclose(g[:, column], slope, rtol=1e-11, atol=1e-25)
+            # 1 - tanh² rounds to an absolute 1e-16 where the stage is fully driven
+            np.testing.assert_allclose(g[:, column], slope, rtol=1e-10, atol=2e-16)
 
 
 def test_exponential_goes_on_as_its_tangent_above_the_knee():
