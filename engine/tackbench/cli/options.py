@@ -1,0 +1,184 @@
+"""Options that several commands share, and what they stand for: calibration, choices, quality, threads."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable, Iterable, Mapping
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+from tackbench.errors import InputError
+
+if TYPE_CHECKING:
+    from tackbench.audio import Calibration
+
+Decorated = TypeVar("Decorated", bound=Callable[..., Any])
+
+QUALITIES = ("draft", "standard", "best")
+DEFAULT_STAGE = "two-voice"
+
+
+def _stack(*options: Callable[[Any], Any]) -> Callable[[Decorated], Decorated]:
+    """Several click options as one decorator, shown in the order given."""
+
+    def decorate(function: Decorated) -> Decorated:
+        for option in reversed(options):
+            function = option(function)
+        return function
+
+    return decorate
+
+
+take_argument = click.argument("take", metavar="TAKE")
+
+stage_option = click.option(
+    "--stage",
+    default=DEFAULT_STAGE,
+    show_default=True,
+    metavar="NAME|FILE",
+    help="The stage: the name of one that ships (see `tackbench stages`), or a stage file ending in .toml.",
+)
+
+with_option = click.option(
+    "--with",
+    "with_",
+    multiple=True,
+    metavar="KEY=VALUE",
+    help="Set one thing: a mod (clip=silicon), a control (gain=0.5, 70% or 7/10 of its travel), supply=24 (volts), "
+    "temperature=10 (degrees Celsius), a part's value or model (C1=22n, D1=1N4148), several parts at once "
+    "(D1+D2=1N4148). May be repeated.",
+)
+
+quality_option = click.option(
+    "--quality",
+    type=click.Choice(QUALITIES),
+    default="standard",
+    show_default=True,
+    help="How exactly the circuit is solved: draft is quick, best is for measuring.",
+)
+
+overwrite_option = click.option(
+    "--overwrite", is_flag=True, help="Replace what an earlier run wrote there; other files are left alone."
+)
+
+threads_option = click.option(
+    "--threads",
+    type=click.IntRange(1, 1024),
+    default=None,
+    metavar="N",
+    help="Variants worked on at the same time (a number); by default as many as the machine has processors. "
+    "The samples do not depend on it.",
+)
+
+calibration_options = _stack(
+    click.option(
+        "--full-scale-volts",
+        type=float,
+        metavar="V",
+        help="Calibration: the volts (peak) at the guitar jack that one full-scale sample stands for.",
+    ),
+    click.option(
+        "--full-scale-dbu",
+        type=float,
+        metavar="DBU",
+        help="Calibration: your interface's instrument input level for 0 dBFS, in dBu, from its data sheet.",
+    ),
+    click.option(
+        "--full-scale-dbv",
+        type=float,
+        metavar="DBV",
+        help="Calibration: the same level in dBV.",
+    ),
+    click.option(
+        "--input-gain-db",
+        type=float,
+        metavar="DB",
+        help="Gain that stood on the interface's input knob, in dB; with --full-scale-dbu or --full-scale-dbv.",
+    ),
+    click.option(
+        "--trimmed-db",
+        type=float,
+        metavar="DB",
+        help="Level change made to the file since, in dB; with --full-scale-dbu or --full-scale-dbv.",
+    ),
+    click.option(
+        "--peak-volts",
+        type=float,
+        metavar="V",
+        help="Calibration: the volts (peak) of the take's loudest sample.",
+    ),
+    click.option(
+        "--pickup",
+        type=click.Choice(["low", "medium", "hot"]),
+        help="Calibration: a plain class of pickup, for its typical loudest peak in volts (from memory; a guess).",
+    ),
+)
+"""The calibration of the take; one of them at most, none means the assumed 0.7 V peak."""
+
+_MAKERS = {
+    "full_scale_volts": "--full-scale-volts",
+    "full_scale_dbu": "--full-scale-dbu",
+    "full_scale_dbv": "--full-scale-dbv",
+    "peak_volts": "--peak-volts",
+    "pickup": "--pickup",
+}
+
+
+def calibration_from(options: Mapping[str, Any]) -> Calibration | None:
+    """The calibration that the options ask for, None when they ask for none.
+
+    Raises ``InputError`` for two calibrations, or for a gain or trim that has nothing to apply to.
+    """
+    given = [name for name in _MAKERS if options[name] is not None]
+    if len(given) > 1:
+        named = " and ".join(_MAKERS[name] for name in given)
+        raise InputError(f"{named} are {len(given)} calibrations", expected="give one")
+    gains = {name: options[name] for name in ("input_gain_db", "trimmed_db") if options[name] is not None}
+    in_decibels = bool(given) and given[0] in ("full_scale_dbu", "full_scale_dbv")
+    if gains and not in_decibels:
+        flag = "--" + next(iter(gains)).replace("_", "-")
+        raise InputError(
+            f"{flag} changes nothing without a level for 0 dBFS",
+            expected="give it together with --full-scale-dbu or --full-scale-dbv",
+        )
+    if not given:
+        return None
+    from tackbench.audio import Calibration
+
+    made: Calibration = getattr(Calibration, given[0])(options[given[0]], **gains)
+    return made
+
+
+def split_calibration(options: dict[str, Any]) -> Calibration | None:
+    """Take the calibration options out of a command's options and give what they ask for."""
+    names = (*_MAKERS, "input_gain_db", "trimmed_db")
+    return calibration_from({name: options.pop(name) for name in names})
+
+
+def pairs_from(texts: Iterable[str], option: str) -> list[tuple[str, str]]:
+    """The KEY=VALUE texts of an option as pairs; ``InputError`` for one without a key or value."""
+    return [_pair(text, option) for text in texts]
+
+
+def _pair(text: str, option: str) -> tuple[str, str]:
+    key, equals, value = text.partition("=")
+    if not equals or not key.strip() or not value.strip():
+        raise InputError(f"{option} {text!r} cannot be read", expected=f"write {option} KEY=VALUE, as in supply=24")
+    return key.strip(), value.strip()
+
+
+def lists_from(texts: Iterable[str], option: str) -> list[tuple[str, list[str]]]:
+    """The KEY=VALUE,VALUE texts of an option as pairs of a key and its values."""
+    found = []
+    for key, values in pairs_from(texts, option):
+        listed = [value.strip() for value in values.split(",")]
+        if not all(listed):
+            raise InputError(f"{option} {key}={values!r} has an empty value", expected=f"write {option} {key}=A,B")
+        found.append((key, listed))
+    return found
+
+
+def threads_from(threads: int | None) -> int:
+    """The number of threads asked for, by default the number of processors."""
+    return threads or os.cpu_count() or 1

@@ -1,0 +1,163 @@
+"""Which variants a shootout holds: one change each against the reference, or the whole product of the changes."""
+
+from __future__ import annotations
+
+import itertools
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from tackbench.errors import InputError
+from tackbench.shootout.questions import offered_for, questions_for
+from tackbench.stage import Stage, Variant
+
+Choices = Mapping[str, Any]
+"""Names of mods, controls, parts, ``supply`` and ``temperature`` to what was chosen for them."""
+
+MOST_VARIANTS = 1000
+"""A product larger than this is taken for a slip of the keyboard."""
+
+
+@dataclass(frozen=True)
+class Plan:
+    """The variants of a shootout, the reference first.
+
+    ``merged`` counts the asked variants that turned out to be circuits already in the plan; ``left_out`` says, one
+    sentence each, what was not asked and could have been; ``question`` is what the plan answers, in words.
+    """
+
+    stage: Stage
+    variants: tuple[Variant, ...]
+    merged: int
+    left_out: tuple[str, ...]
+    question: str
+
+    @property
+    def reference(self) -> Variant:
+        """The variant that the others are compared with."""
+        return self.variants[0]
+
+
+@dataclass(frozen=True)
+class Axis:
+    """One thing that is tried: the key as it was written, and the choices that each value stands for."""
+
+    key: str
+    options: tuple[Choices, ...]
+
+    @property
+    def names(self) -> set[str]:
+        """The mods, controls and parts that the options touch."""
+        return {name for option in self.options for name in option}
+
+
+def make_plan(
+    stage: Stage,
+    with_: Mapping[str, Any] | Iterable[tuple[str, Any]] = (),
+    tries: Mapping[str, Sequence[Any]] | Iterable[tuple[str, Sequence[Any]]] = (),
+    grid: bool = False,
+) -> Plan:
+    """The plan for what was asked, or for the questions that a stage offers when nothing was.
+
+    Parameters
+    ----------
+    with_ : key and value pairs that set the reference; a mapping or pairs.
+    tries : key and values pairs; each value is one variant against the reference, unless ``grid``.
+    grid : the whole product of the tried values instead of one change at a time.
+
+    Raises ``InputError`` for an unknown key or value, a key that is set twice, or a product that is out of hand.
+    """
+    chosen = read_choices(stage, _pairs(with_))
+    axes = [_axis(stage, key, values) for key, values in _gathered(_pairs(tries))]
+    if not axes:
+        return _offer(stage, chosen, grid)
+    options = _product(axes) if grid else [option for axis in axes for option in axis.options]
+    kind = "every combination of " if grid and len(axes) > 1 else ""
+    return _plan(stage, chosen, options, (), kind + " and ".join(axis.key for axis in axes))
+
+
+def read_choices(stage: Stage, pairs: Iterable[tuple[str, Any]]) -> dict[str, Any]:
+    """The choices that key and value pairs stand for; ``InputError`` when two of them set the same thing."""
+    chosen: dict[str, Any] = {}
+    said: dict[str, str] = {}
+    for key, value in pairs:
+        for name, choice in stage.parse_choice(key, str(value)).items():
+            if name in chosen:
+                raise InputError(f"{name} is set twice, by {said[name]!r} and by {key!r}", expected="set it once")
+            chosen[name], said[name] = choice, key
+    return chosen
+
+
+def _pairs(given: Mapping[str, Any] | Iterable[tuple[str, Any]]) -> list[tuple[str, Any]]:
+    return list(given.items()) if isinstance(given, Mapping) else list(given)
+
+
+def _gathered(pairs: Iterable[tuple[str, Any]]) -> list[tuple[str, list[Any]]]:
+    """The values of each key, in the order in which the keys first came."""
+    found: dict[str, list[Any]] = {}
+    for key, values in pairs:
+        listed = [values] if isinstance(values, (str, int, float)) else list(values)
+        found.setdefault(key, []).extend(listed)
+    return list(found.items())
+
+
+def _axis(stage: Stage, key: str, values: Sequence[Any]) -> Axis:
+    if not values:
+        raise InputError(f"nothing to try for {key!r}", expected=f"write {key}=VALUE,VALUE")
+    return Axis(key, tuple(stage.parse_choice(key, str(value)) for value in values))
+
+
+def _product(axes: Sequence[Axis]) -> list[Choices]:
+    """Every combination of one option from each axis."""
+    for first, second in itertools.combinations(axes, 2):
+        both = first.names & second.names
+        if both:
+            raise InputError(
+                f"{min(both)} is tried twice, by {first.key!r} and by {second.key!r}",
+                expected="in a grid each thing has one list of values",
+            )
+    size = 1
+    for axis in axes:
+        size *= len(axis.options)
+    if size > MOST_VARIANTS:
+        raise InputError(f"the grid has {size} variants", expected=f"ask for at most {MOST_VARIANTS} at once")
+    return [_merge(combination) for combination in itertools.product(*(axis.options for axis in axes))]
+
+
+def _merge(combination: Iterable[Choices]) -> Choices:
+    together: dict[str, Any] = {}
+    for option in combination:
+        together.update(option)
+    return together
+
+
+def _offer(stage: Stage, chosen: Choices, grid: bool) -> Plan:
+    """What is tried when nothing was asked: the stage's own questions, else its mods and supply voltages in turn."""
+    questions = questions_for(stage)
+    if questions is not None:
+        base = {**read_choices(stage, questions.base.items()), **chosen}
+        axes = [_axis(stage, key, values) for key, values in questions.grid.items() if key not in chosen]
+        if axes:
+            return _plan(stage, base, _product(axes), (), questions.words)
+    if grid:
+        raise InputError("nothing to make a grid of", expected="say what to try, --try KEY=VALUE,VALUE")
+    tried, left_out = offered_for(stage, chosen)
+    options = [stage.parse_choice(key, str(value)) for key, value in tried]
+    return _plan(stage, chosen, options, left_out, "one change at a time" if options else "the stage alone")
+
+
+def _plan(
+    stage: Stage, chosen: Choices, options: Sequence[Choices], left_out: tuple[str, ...], question: str
+) -> Plan:
+    """The reference and every option against it, each circuit once."""
+    asked = [stage.variant(chosen), *(stage.variant({**chosen, **option}) for option in options)]
+    kept: list[Variant] = []
+    for variant in asked:
+        if not any(_same(variant, other) for other in kept):
+            kept.append(variant)
+    return Plan(stage, tuple(kept), len(asked) - len(kept), left_out, question)
+
+
+def _same(one: Variant, other: Variant) -> bool:
+    """Whether two variants are the same circuit, so that one file serves both."""
+    return one.circuit == other.circuit
