@@ -1,0 +1,67 @@
+"""The command ``check``: is a stage sound, what are its voltages, how does it amplify."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import click
+
+from tackbench.cli.corners import HIGHEST, LOWEST, Corners, corners, frequencies
+from tackbench.cli.options import pairs_from, stage_option, with_option
+from tackbench.cli.output import say
+from tackbench.cli.table import paragraph
+from tackbench.errors import InputError
+from tackbench.network import OperatingPoint, operating_point, response
+from tackbench.shootout.plan import read_choices
+from tackbench.stage import Variant, load_stage
+from tackbench.values import format_quantity
+
+
+@click.command("check")
+@stage_option
+@with_option
+def command(stage: str, with_: tuple[str, ...]) -> None:
+    """Say whether a stage is sound: voltages, current, gain.
+
+    Reads the stage file, applies what --with sets, solves for the resting voltages (take silent) and gives the
+    small-signal gain at 1 kHz and at its peak with the -3 dB corners in Hz. The exit status is 0 for a sound stage.
+    """
+    loaded = load_stage(stage)
+    variant = loaded.variant(read_choices(loaded, pairs_from(with_, "--with")))
+    if variant.over_limits:
+        raise InputError("; ".join(variant.over_limits), file=loaded.name)
+    rest = operating_point(variant.circuit)
+    hertz = frequencies()
+    shape = corners(hertz, response(variant.circuit, hertz))
+    for line in _report(variant, rest, shape):
+        say(line)
+
+
+def _report(variant: Variant, rest: OperatingPoint, shape: Corners | None) -> Iterator[str]:
+    yield f"{variant.stage.name}: {variant.words() or 'as built'}: sound"
+    yield "\nResting voltages (take silent)"
+    for node, volts in rest.node_volts.items():
+        yield f"  {node.ljust(12)} {volts:9.3f} V"
+    for ref, volts in rest.opamp_out.items():
+        yield f"  {(ref + ' output').ljust(12)} {volts:9.3f} V"
+    if rest.supply_current is not None:
+        yield f"\nSupply current  {format_quantity(rest.supply_current, 'A', 3)}"
+    yield "\nSmall-signal gain"
+    yield from _gains(shape)
+    for sentence in (*variant.notes, *rest.warnings):
+        yield from paragraph(sentence)
+
+
+def _gains(shape: Corners | None) -> Iterator[str]:
+    if shape is None:
+        yield "  nothing of the take reaches the output"
+        return
+    yield f"  at 1 kHz    {_gain(shape.gain_db_1khz)}"
+    yield f"  peak        {_gain(shape.peak_db)} at {format_quantity(shape.peak_hz, 'Hz', 3)}"
+    low = f"{format_quantity(shape.low_hz, 'Hz', 3)}" if shape.low_hz else f"below {LOWEST:g} Hz"
+    high = f"{format_quantity(shape.high_hz, 'Hz', 3)}" if shape.high_hz else f"above {HIGHEST / 1000:g} kHz"
+    yield f"  -3 dB       {low} to {high}"
+
+
+def _gain(decibels: float) -> str:
+    return f"{decibels:.1f} dB ({10 ** (decibels / 20):.3g} times)"
