@@ -101,7 +101,7 @@ def _upsampling_phases(factor: int) -> tuple[int, tuple[Samples, ...]]:
 
 @cache
 def _downsampling_taps(factor: int, transition: float) -> tuple[int, Samples]:
-    """Half length in output samples, and the taps, summing to 1, on a grid ``factor`` times as dense as the output."""
+    """Half length in output samples, and the taps, summing to 1, on a grid ``factor`` times as dense."""
     half = _half_length(transition)
     taps = _windowed_sinc(np.arange(-half * factor, half * factor + 1.0) / factor, half)
     return half, taps / taps.sum()
@@ -145,6 +145,13 @@ class Upsampler:
             out[:, phase] = phase_out
         self._past = stream[count:]
         return out.reshape(-1)
+
+    def ending(self) -> Samples:
+        """What pushing ``2 * half`` zeros would return, while the stream itself stays where it is."""
+        kept = self._past
+        tail = self.push(np.zeros(2 * self.half))
+        self._past = kept
+        return tail
 
 
 class _Decimator:
