@@ -95,9 +95,9 @@ class LoudnessMeter:
 
     Every channel has the weight 1, however many there are: a take of several channels is a set of strings or
     pickups, not a surround mix. ``weights`` sets others (BS.1770 gives 1.41 to the surround channels). Only whole
-    400 ms blocks are counted. What it keeps grows by ten numbers a second; the result does not depend on the block size. The unit
-    of the samples may be full scale or volts: then only differences mean anything, and the absolute gate of -70 LKFS
-    lies 70 LU under 1 V.
+    400 ms blocks are counted. What it keeps grows by ten numbers a second; the result does not depend on the block
+    size. The unit of the samples may be full scale or volts: then only differences mean anything, and the absolute
+    gate of -70 LKFS lies 70 LU under 1 V.
     """
 
     def __init__(self, rate: int, channels: int, weights: Sequence[float] | None = None) -> None:
