@@ -1,0 +1,94 @@
+"""What a user must know about a variant and can be told without solving it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from typing import TYPE_CHECKING
+
+from tackbench.circuit import Circuit, Part
+from tackbench.circuit.graph import Groups, is_short
+from tackbench.stage.limits import limit_notes, unrated
+from tackbench.stage.model import SUPPLY
+from tackbench.values import format_quantity
+
+if TYPE_CHECKING:
+    from tackbench.stage.variant import Variant
+
+
+def notes_of(variant: Variant) -> tuple[str, ...]:
+    """Every note, one sentence each."""
+    return (
+        *_supply_notes(variant),
+        *limit_notes(variant),
+        *_lone_diode_notes(variant),
+        *_source_notes(variant),
+        *_file_notes(variant),
+    )
+
+
+def _supply_notes(variant: Variant) -> Iterator[str]:
+    supply = variant.stage.supply
+    if supply is None or abs(variant.settings[SUPPLY]) <= abs(supply.volts):
+        return
+    chosen, own = format_quantity(variant.settings[SUPPLY], "V"), format_quantity(supply.volts, "V")
+    yield f"{chosen} is above the stage's own {own}: your box may not be built for this; check every rating"
+    bare = unrated(variant)
+    if bare:
+        yield f"no rating given for {', '.join(bare)}, which {'sees' if len(bare) == 1 else 'see'} the raised supply"
+
+
+def _lone_diode_notes(variant: Variant) -> Iterator[str]:
+    """One diode of an antiparallel pair changed alone by a part choice."""
+    for one, two in antiparallel_pairs(variant.circuit):
+        chosen = [part for part in (one, two) if part.ref in variant.choices]
+        if len(chosen) != 1 or (one.parameters, one.count) == (two.parameters, two.count):
+            continue
+        changed, stays = chosen[0], two if chosen[0] is one else one
+        words = {part.ref: variant.parts[part.ref].value_words() for part in (one, two)}
+        refs = f"{one.ref}+{two.ref}={variant.choices[changed.ref]}"
+        advice = f"; for both write {refs}" if isinstance(variant.choices[changed.ref], str) else ""
+        yield f"{stays.ref} stays {words[stays.ref]}: asymmetric{advice}"
+
+
+def antiparallel_pairs(circuit: Circuit) -> list[tuple[Part, Part]]:
+    """Diodes between the same two nodes (wires and zero ohms counted as one node) in opposite directions."""
+    groups = Groups()
+    for part in circuit.parts:
+        if is_short(part):
+            groups.join(*part.pins[:2])
+    seen: dict[tuple[str, str], list[Part]] = {}
+    pairs: list[tuple[Part, Part]] = []
+    for part in circuit.parts:
+        if part.kind == "diode":
+            ends = groups.of(part.pins[0]), groups.of(part.pins[1])
+            pairs.extend((other, part) for other in seen.get((ends[1], ends[0]), ()) if ends[0] != ends[1])
+            seen.setdefault(ends, []).append(part)
+    return pairs
+
+
+def _source_notes(variant: Variant) -> Iterator[str]:
+    """Models whose figures are from memory, and models that come from the user's own files."""
+    memory: dict[str, list[str]] = {}
+    own: dict[str, list[str]] = {}
+    for part in variant.parts.values():
+        entry = part.model.entry if part.model is not None else None
+        if entry is not None and entry.from_memory:
+            memory.setdefault(entry.name, []).append(part.ref)
+        if entry is not None and entry.own:
+            own.setdefault(f"{entry.name} is your own ({entry.file})", []).append(part.ref)
+    for name, refs in memory.items():
+        yield f"figures of {name} ({', '.join(refs)}) are from memory, in part or whole: check them against a data sheet"
+    for words, refs in own.items():
+        yield f"{', '.join(refs)}: {words}"
+
+
+def _file_notes(variant: Variant) -> Iterator[str]:
+    """What the stage file leaves open, and node names that look like ground and are not."""
+    stage = variant.stage
+    if stage.input.assumed:
+        yield "the file gives no series resistance at the input: none is assumed"
+    if stage.output.assumed:
+        yield "the file gives no load at the output: none is assumed"
+    for node in variant.circuit.nodes():
+        if node.casefold() in ("gnd", "ground", "earth"):
+            yield f'the node {node!r} is a node like any other: ground is written "0"'
