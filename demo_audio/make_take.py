@@ -197,7 +197,7 @@ def play(note: Note, hand: np.random.RandomState) -> Samples:
 
 
 def pickup_coefficients() -> tuple[float, float, float, float]:
-    """(b, a1, a2, corner): the coil's low pass b (1 + z^-1)^2 / (1 + a1 z^-1 + a2 z^-2), bilinear, and its corner in hertz.
+    """The coil's low pass b (1 + z^-1)^2 / (1 + a1 z^-1 + a2 z^-2), bilinear: b, a1, a2 and its corner in hertz.
 
     A single coil of 2.4 H and 6 kilohm with 110 pF of its own, 490 pF of cable, two 250 kilohm pots and 1 megohm.
     """
