@@ -6,6 +6,7 @@ import itertools
 
 import numpy as np
 import pytest
+
 from tackbench.audio.resample import Downsampler, Upsampler, base_factor, check_rate, true_peak_factor
 from tackbench.errors import InputError
 
