@@ -17,7 +17,7 @@ LOWEST, HIGHEST, POINTS = 1.0, 200e3, 1201
 
 @dataclass(frozen=True)
 class Corners:
-    """Gains in dB, frequencies in Hz; a corner is None where the gain stays within 3 dB up to that end of the span."""
+    """Gains in dB, frequencies in Hz; a corner is None where the gain stays within 3 dB to that end of the span."""
 
     gain_db_1khz: float
     peak_db: float

@@ -100,7 +100,7 @@ calibration_options = _stack(
         "--trimmed-db",
         type=float,
         metavar="DB",
-        help="By how many dB the file was turned down since (negative: up); with --full-scale-dbu or --full-scale-dbv.",
+        help="By how many dB the file was turned down since; with --full-scale-dbu or --full-scale-dbv.",
     ),
     click.option(
         "--peak-volts",
@@ -111,13 +111,13 @@ calibration_options = _stack(
     click.option(
         "--pickup",
         type=click.Choice(["low", "medium", "hot"]),
-        help="Calibration: a plain class of pickup for the take's loudest sample: low 0.35 V, medium 0.7 V, hot 1.4 V "
+        help="Calibration: a plain class of pickup, for the loudest sample: low 0.35 V, medium 0.7 V, hot 1.4 V "
         "(figures from memory).",
     ),
 )
 """The calibration of the take; one of them at most, none means the assumed 0.7 V peak."""
 
-_CALIBRATION_KEYS = (
+CALIBRATION_KEYS = (
     "full_scale_volts",
     "full_scale_dbu",
     "full_scale_dbv",
@@ -135,7 +135,7 @@ def split_calibration(options: dict[str, Any]) -> Calibration:
     """
     from tackbench.audio import choose_calibration
 
-    return choose_calibration(**{name: options.pop(name) for name in _CALIBRATION_KEYS})
+    return choose_calibration(**{name: options.pop(name) for name in CALIBRATION_KEYS})
 
 
 def pairs_from(texts: Iterable[str], option: str) -> list[tuple[str, str]]:

@@ -9,7 +9,7 @@ import click
 from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
 from tackbench.cli.words import part_words
-from tackbench.stage import Mod, Stage, load_stage, stage_names
+from tackbench.stage import Mod, Stage, load_stage, shipped_stages
 from tackbench.values import format_position
 
 
@@ -22,7 +22,7 @@ def command(name: str | None) -> None:
     with their travel in percent, the supply in volts, parts with their values.
     """
     if name is None:
-        for known in stage_names():
+        for known in shipped_stages():
             say(f"{known}  {load_stage(known).title}")
         say("\nOne of them in full: tackbench stages NAME")
         return

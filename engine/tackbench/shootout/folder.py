@@ -4,51 +4,35 @@ from __future__ import annotations
 
 import json
 import os
-import re
 import shutil
 import tempfile
-import unicodedata
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
-from tackbench.errors import InputError, WorkError
+from tackbench.audio.names import safe_name
+from tackbench.audio.place import check_folder as check_writable
+from tackbench.audio.place import storage_error
+from tackbench.errors import InputError
 
 DATA_FILE = "shootout.json"
 PAGE_FILE = "index.html"
 SCHEMA = "tackbench.shootout"
-LONGEST_NAME = 80
-
-_SPELT = str.maketrans({"\u00b5": "u", "\u03bc": "u", "\u03a9": "ohm", "\u2126": "ohm", "\u00b0": ""})
-"""Unit signs (micro, Greek mu, omega, ohm, degree) as file names spell them."""
 
 
 def default_folder(take: Path, stage: str) -> Path:
     """The folder that is used when none is named, in the current directory: named after the take and the stage."""
-    return Path(f"{plain_name(take.stem)}-{plain_name(stage)}")
-
-
-def plain_name(words: str) -> str:
-    """Words as a file name that every system takes: ASCII letters, digits, dots and hyphens, at most 80 of them."""
-    text = words.translate(_SPELT)
-    text = unicodedata.normalize("NFKD", text).encode("ascii", "ignore").decode()
-    text = re.sub(r"[^A-Za-z0-9.]+", "-", text).strip("-.")[:LONGEST_NAME].strip("-.")
-    return text or "unnamed"
+    return Path(f"{safe_name(take.stem)}-{safe_name(stage)}")
 
 
 def check_folder(folder: Path, overwrite: bool) -> None:
     """Say before any work whether the folder may be made or filled; ``InputError`` when not."""
-    parent = folder.absolute().parent
-    if not parent.is_dir():
-        raise InputError(
-            f"the folder {parent} does not exist", file=folder, expected="make it first, or choose another"
-        )
     if folder.exists() and not folder.is_dir():
         raise InputError("this is a file, not a folder", file=folder, expected="choose another folder with -o")
-    place = folder if folder.is_dir() else parent
-    if not os.access(place, os.W_OK | os.X_OK) or not os.access(parent, os.W_OK | os.X_OK):
-        raise InputError("this folder may not be written to", file=place, expected="choose another place with -o")
+    check_writable(folder.absolute().parent)
+    if folder.is_dir():
+        check_writable(folder)
     if folder.is_dir() and any(folder.iterdir()) and not overwrite:
         raise InputError(
             "this folder already holds files",
@@ -95,7 +79,7 @@ def built_beside(folder: Path) -> Iterator[Path]:
     try:
         building = Path(tempfile.mkdtemp(prefix=f".{folder.name}-", suffix=".part", dir=folder.absolute().parent))
     except OSError as trouble:
-        raise WorkError(f"{folder}: no folder can be made beside it: {trouble.strerror}") from trouble
+        raise storage_error(trouble, folder) from None
     try:
         yield building
     finally:
@@ -114,7 +98,7 @@ def move_into_place(building: Path, folder: Path, names: Sequence[str]) -> None:
         else:
             _move_files(building, folder, names)
     except OSError as trouble:
-        raise WorkError(f"{folder}: the finished files could not be moved here: {trouble.strerror}") from trouble
+        raise storage_error(trouble, folder) from None
 
 
 def _move_whole(building: Path, folder: Path) -> None:

@@ -14,15 +14,15 @@ from tackbench.stage import Stage, Variant
 Choices = Mapping[str, Any]
 """Names of mods, controls, parts, ``supply`` and ``temperature`` to what was chosen for them."""
 
-MOST_VARIANTS = 1000
-"""A product larger than this is taken for a slip of the keyboard."""
+MOST_VARIANTS = 400
+"""More variants than this in one shootout are taken for a slip of the keyboard."""
 
 
 @dataclass(frozen=True)
 class Plan:
     """The variants of a shootout, the reference first.
 
-    ``merged`` counts the asked variants that turned out to be circuits already in the plan; ``left_out`` says, one
+    ``merged`` counts the tried variants that turned out to be the same circuit as another one; ``left_out`` says, one
     sentence each, what was not asked and could have been; ``question`` is what the plan answers, in words.
     """
 
@@ -81,11 +81,18 @@ def read_choices(stage: Stage, pairs: Iterable[tuple[str, Any]]) -> dict[str, An
     chosen: dict[str, Any] = {}
     said: dict[str, str] = {}
     for key, value in pairs:
-        for name, choice in stage.parse_choice(key, str(value)).items():
+        for name, choice in _read(stage, key, value).items():
             if name in chosen:
                 raise InputError(f"{name} is set twice, by {said[name]!r} and by {key!r}", expected="set it once")
             chosen[name], said[name] = choice, key
     return chosen
+
+
+def _read(stage: Stage, key: str, value: Any) -> Choices:
+    """The choices of one key and value; what is no text or number (a model's own table) is passed on as it is."""
+    if isinstance(value, (str, int, float)):
+        return stage.parse_choice(key, str(value))
+    return dict.fromkeys(key.split("+"), value)
 
 
 def _pairs(given: Mapping[str, Any] | Iterable[tuple[str, Any]]) -> list[tuple[str, Any]]:
@@ -104,7 +111,7 @@ def _gathered(pairs: Iterable[tuple[str, Any]]) -> list[tuple[str, list[Any]]]:
 def _axis(stage: Stage, key: str, values: Sequence[Any]) -> Axis:
     if not values:
         raise InputError(f"nothing to try for {key!r}", expected=f"write {key}=VALUE,VALUE")
-    return Axis(key, tuple(stage.parse_choice(key, str(value)) for value in values))
+    return Axis(key, tuple(_read(stage, key, value) for value in values))
 
 
 def _product(axes: Sequence[Axis]) -> list[Choices]:
@@ -142,7 +149,7 @@ def _offer(stage: Stage, chosen: Choices, grid: bool) -> Plan:
     if grid:
         raise InputError("nothing to make a grid of", expected="say what to try, --try KEY=VALUE,VALUE")
     tried, left_out = offered_for(stage, chosen)
-    options = [stage.parse_choice(key, str(value)) for key, value in tried]
+    options = [_read(stage, key, value) for key, value in tried]
     return _plan(stage, chosen, options, left_out, "one change at a time" if options else "the stage alone")
 
 
@@ -150,14 +157,11 @@ def _plan(
     stage: Stage, chosen: Choices, options: Sequence[Choices], left_out: tuple[str, ...], question: str
 ) -> Plan:
     """The reference and every option against it, each circuit once."""
-    asked = [stage.variant(chosen), *(stage.variant({**chosen, **option}) for option in options)]
-    kept: list[Variant] = []
-    for variant in asked:
-        if not any(_same(variant, other) for other in kept):
-            kept.append(variant)
-    return Plan(stage, tuple(kept), len(asked) - len(kept), left_out, question)
-
-
-def _same(one: Variant, other: Variant) -> bool:
-    """Whether two variants are the same circuit, so that one file serves both."""
-    return one.circuit == other.circuit
+    reference = stage.variant(chosen)
+    tried: list[Variant] = []
+    for option in options:
+        variant = stage.variant({**chosen, **option})
+        if all(variant.circuit != other.circuit for other in tried):
+            tried.append(variant)
+    others = (variant for variant in tried if variant.circuit != reference.circuit)
+    return Plan(stage, (reference, *others), len(options) - len(tried), left_out, question)
