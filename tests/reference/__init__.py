@@ -1,0 +1,1 @@
+"""The independent reference solver: nodal equations in Kirchhoff variables, own laws and stamps, own integrator."""
