@@ -43,7 +43,7 @@ def first_fault(circuit: Circuit) -> Fault | None:
 def faults(circuit: Circuit) -> Iterator[Fault]:
     """Every fault of the circuit, the gravest first."""
     checks: tuple[Callable[[Circuit], Iterator[Fault]], ...] = (
-        _linked_sources,
+        shorting_links,
         _source_loops,
         _sources_across_inductors,
         _unbiased_inputs,
@@ -53,7 +53,7 @@ def faults(circuit: Circuit) -> Iterator[Fault]:
         yield from check(circuit)
 
 
-def _linked_sources(circuit: Circuit) -> Iterator[Fault]:
+def shorting_links(circuit: Circuit) -> Iterator[Fault]:
     """Wires that short a source: the supply (whatever its resistance), a rail, a source part, a take without
     series resistance."""
     sources = [(name, plus, minus) for name, plus, minus, _ in ideal_sources(circuit)]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from functools import cache
@@ -52,7 +53,7 @@ def load_parts(extra_folder: Path | str | None = None, neighbour: Path | None = 
     named = user_parts_folder()
     if named is not None:
         _add_folder(by_name, named, f"the environment variable {PARTS_VARIABLE}")
-    if neighbour is not None and neighbour.is_dir():
+    if neighbour is not None and os.path.isdir(neighbour):
         _add_folder(by_name, neighbour, "the stage file's neighbour")
     if extra_folder is not None:
         _add_folder(by_name, Path(extra_folder), "the parts folder option")

@@ -6,10 +6,12 @@ from collections import Counter
 from collections.abc import Iterable
 
 from tackbench.circuit import GROUND
+from tackbench.circuit.checks import shorting_links
 from tackbench.errors import nearest
 from tackbench.stage.kinds import KINDS
-from tackbench.stage.model import Stage
+from tackbench.stage.model import ROOM_CELSIUS, Stage
 from tackbench.stage.mods import place
+from tackbench.stage.netlist import flatten
 from tackbench.stage.spec import PartSpec
 from tackbench.values import Where
 
@@ -24,6 +26,7 @@ def check_connections(stage: Stage, every_part: Iterable[PartSpec]) -> None:
     touched = _touched(stage, parts)
     _check_links(stage, set(touched) | _fed(stage) | {GROUND})
     linked = {node for _, _, pair in _links(stage) for node in pair}
+    _check_shorting_links(stage)
     _check_jacks(stage, set(touched) | linked)
     _check_pins(stage, parts, touched, linked)
 
@@ -56,6 +59,21 @@ def _check_links(stage: Stage, nodes: set[str]) -> None:
                 raise stage.where.at(part=place(mod, position), key="link").fault(
                     f"no part meets the node {node!r} of the link", nearest(node, nodes)
                 )
+
+
+def _check_shorting_links(stage: Stage) -> None:
+    """Refuse a position whose own links short a source, whatever else is chosen."""
+    volts = None if stage.supply is None else stage.supply.volts
+    for mod in stage.mods.values():
+        for position in mod.positions.values():
+            if not position.link:
+                continue
+            gone = {*position.lift, *position.edits}
+            sources = [part for ref, part in stage.parts.items() if part.kind == "volts" and ref not in gone]
+            circuit = flatten(stage, sources, position.link, {}, volts, ROOM_CELSIUS)
+            for fault in shorting_links(circuit):
+                where = stage.where.at(part=place(mod.name, position.name), key="link")
+                raise where.fault(fault.found, fault.expected)
 
 
 def _check_jacks(stage: Stage, met: set[str]) -> None:

@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from tackbench.errors import InputError
 from tackbench.parts import PartsLibrary
 from tackbench.stage.spec import PartSpec
 from tackbench.values import Where
@@ -98,13 +99,13 @@ class Stage:
         return Where(self.file if self.file is not None else self.name)
 
     def known_parts(self) -> dict[str, tuple[PartSpec, ...]]:
-        """Every designator that any variant can have, with each part (as drawn or fitted) that bears it."""
-        known: dict[str, tuple[PartSpec, ...]] = {ref: (part,) for ref, part in self.parts.items()}
+        """Every designator that any variant can have, with a part of each kind (as drawn or fitted) that bears it."""
+        known: dict[str, dict[str, PartSpec]] = {ref: {part.kind: part} for ref, part in self.parts.items()}
         for mod in self.mods.values():
             for position in mod.positions.values():
                 for ref, part in position.fit.items():
-                    known[ref] = (*known.get(ref, ()), part)
-        return known
+                    known.setdefault(ref, {}).setdefault(part.kind, part)
+        return {ref: tuple(parts.values()) for ref, parts in known.items()}
 
     def parse_choice(self, key: str, text: str) -> dict[str, object]:
         """One ``KEY=VALUE`` of a command line as normalised choices.
@@ -125,3 +126,14 @@ class Stage:
         from tackbench.stage.variant import make_variant
 
         return make_variant(self, {**(choices or {}), **more})
+
+    def position_faults(self) -> tuple[str, ...]:
+        """One sentence for each position that makes an unsound circuit when chosen with all else as built."""
+        sentences = []
+        for mod in self.mods.values():
+            for position in mod.positions:
+                try:
+                    self.variant({mod.name: position})
+                except InputError as error:
+                    sentences.append(f"{mod.name}={position}: {error}")
+        return tuple(sentences)

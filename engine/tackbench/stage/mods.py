@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from types import MappingProxyType
 from typing import Any
 
@@ -120,10 +120,18 @@ def check_edits(stage: Stage) -> list[PartSpec]:
             _check_fit(stage, position, where)
             every.extend(position.fit.values())
             for ref, part in position.fit.items():
-                fitted[ref] = (*fitted.get(ref, ()), part)
+                fitted[ref] = one_per_kind((*fitted.get(ref, ()), part))
         for ref, parts in fitted.items():
-            known[ref] = (*known.get(ref, ()), *parts)
+            known[ref] = one_per_kind((*known.get(ref, ()), *parts))
     return every
+
+
+def one_per_kind(parts: Iterable[PartSpec]) -> tuple[PartSpec, ...]:
+    """The first part of each kind: enough to tell what an edit may be."""
+    first: dict[str, PartSpec] = {}
+    for part in parts:
+        first.setdefault(part.kind, part)
+    return tuple(first.values())
 
 
 def _checked_edits(

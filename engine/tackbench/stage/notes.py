@@ -77,7 +77,7 @@ def _source_notes(variant: Variant) -> Iterator[str]:
         if entry is not None and entry.own:
             own.setdefault(f"{entry.name} is your own ({entry.file})", []).append(part.ref)
     for name, refs in memory.items():
-        yield f"figures of {name} ({', '.join(refs)}) are from memory, in part or whole: check them against a data sheet"
+        yield f"figures of {name} ({', '.join(refs)}) are from memory, in part or whole: check a data sheet"
     for words, refs in own.items():
         yield f"{', '.join(refs)}: {words}"
 

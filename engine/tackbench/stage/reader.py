@@ -107,7 +107,7 @@ def _read_jack(document: Mapping[str, Any], side: str, key: str, where: Where) -
     if key not in table:
         return Jack(node, 0.0 if side == "input" else None, assumed=True)
     raw, at_key = table[key], here.at(key=key)
-    if side == "output" and isinstance(raw, str) and raw.strip() == "none":
+    if side == "output" and isinstance(raw, str) and raw.strip().casefold() == "none":
         return Jack(node, None)
     return Jack(node, parse_quantity(raw, "ohm", ">=0" if side == "input" else ">0", at_key))
 

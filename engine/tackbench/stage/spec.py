@@ -96,8 +96,11 @@ def read_node(raw: Any, where: Where) -> str:
         raise where.fault(f"the node {shown(raw)} is a number", f'write it as text: "{raw}"'[:80])
     if not isinstance(raw, str):
         raise where.fault(f"{shown(raw)} is no node", 'write a node name as text; "0" is ground')
-    if not raw or raw != raw.strip():
-        raise where.fault(f"the node name {shown(raw)} is empty or has blanks at its ends", 'write for example "a"')
+    if not raw or raw != raw.strip() or not raw.isprintable():
+        raise where.fault(
+            f"the node name {shown(raw)} is empty, or has blanks at its ends or control characters",
+            'write for example "a"',
+        )
     return raw
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import unicodedata
 from collections.abc import Iterable, Mapping
 from typing import Any
 
@@ -18,11 +19,15 @@ def check_keys(table: Mapping[str, Any], known: Iterable[str], where: Where) -> 
 
 
 def read_text(table: Mapping[str, Any], key: str, where: Where, default: str = "") -> str:
-    """The text under ``key``, or ``default`` when it is absent."""
+    """The text under ``key`` on one line, or ``default`` when it is absent or blank. Control characters, which
+    could garble a terminal or a page, are refused."""
     raw = table.get(key, default)
     if not isinstance(raw, str):
         raise where.at(key=key).fault(f"{shown(raw)} is no text", f'write {key} = "…"')
-    return raw
+    text = " ".join(raw.split())
+    if any(unicodedata.category(character) == "Cc" for character in text):
+        raise where.at(key=key).fault(f"{shown(raw)} holds control characters", "write plain text")
+    return text or default
 
 
 def read_table(document: Mapping[str, Any], key: str, where: Where, required: bool = False) -> dict[str, Any]:

@@ -103,5 +103,5 @@ def _check(stage: Stage, circuit: Circuit, bench: Bench) -> None:
     if fault is None:
         return
     by = next((place for (a, b), place in bench.links.items() if fault.part == f"link {a}-{b}"), None)
-    part = f"{by} link" if by is not None else fault.part
-    raise stage.where.at(part=part, key=fault.key).fault(fault.found, fault.expected)
+    part, key = (by, "link") if by is not None else (fault.part, fault.key)
+    raise stage.where.at(part=part, key=key).fault(fault.found, fault.expected)

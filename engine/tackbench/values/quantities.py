@@ -11,7 +11,7 @@ from tackbench.values.units import OHM, PREFIXES, UNITS, Unit
 from tackbench.values.where import Where, shown
 
 _PLAIN = re.compile(
-    r"(?P<number>[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+))(?:[eE](?P<exponent>[+-]?[0-9]+))?(?P<space>\s*)(?P<suffix>.*)"
+    r"(?P<number>[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+))(?:[eE](?P<exponent>[+-]?[0-9]+))?\s*(?P<suffix>.*)"
 )
 _CODE = re.compile(
     r"(?P<sign>[+-]?)(?P<whole>[0-9]*)(?P<mark>[^0-9\s.,+-])(?P<decimals>[0-9]+)\s*(?P<suffix>[^0-9]*)"
@@ -75,10 +75,7 @@ def _read(text: str, kind: Unit) -> float | None:
     plain = _PLAIN.fullmatch(text)
     if not plain:
         return None
-    suffix = plain["suffix"].strip()
-    if suffix[:1].isdigit() and not plain["space"]:  # "0.021/V" would be ambiguous
-        return None
-    exponent = _suffix_exponent(suffix, kind)
+    exponent = _suffix_exponent(plain["suffix"].strip(), kind)
     if exponent is None:
         return None
     return float(f"{plain['number']}e{exponent + int(plain['exponent'] or 0)}")
@@ -132,7 +129,12 @@ def _unreadable(raw: str, text: str, kind: Unit, where: Where) -> Exception:
                 and _read(text, UNITS[""]) is None
             ):
                 return where.fault(f"{shown(raw)} is in {other.name}, which does not fit here", expected)
-        if text[-1] in "BCDFGJKMN" and _read(text[:-1], kind) is not None and text[-2:-1] not in ("", " "):
+        if (
+            kind.symbol in ("F", "H", OHM)
+            and text[-1] in "BCDFGJKMN"
+            and _read(text[:-1], kind) is not None
+            and text[-2:-1] not in ("", " ")
+        ):
             return where.fault(
                 f"{shown(raw)} looks like a value with a tolerance letter", "give the tolerance under its own key"
             )

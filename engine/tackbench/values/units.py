@@ -55,7 +55,7 @@ UNITS: Mapping[str, Unit] = MappingProxyType(
             "F",
             {"F": 0},
             "100n, 100 nF or 0u1",
-            1e-18,
+            1e-21,
             1e4,
             ("F",),
             _UP,
@@ -63,7 +63,7 @@ UNITS: Mapping[str, Unit] = MappingProxyType(
             ("farad", "farads"),
         ),
         "H": Unit("henries", "H", {"H": 0}, "2H2, 2.2 H or 500m", 1e-12, 1e6, ("H",), words=("henry", "henries")),
-        "V": Unit("volts", "V", {"V": 0}, "9, 9V or 4V5", 1e-12, 1e5, ("V",), words=("volt", "volts")),
+        "V": Unit("volts", "V", {"V": 0}, "9, 9V or 4V5", 1e-12, 1e9, ("V",), words=("volt", "volts")),
         "A": Unit(
             "amperes",
             "A",

@@ -23,7 +23,15 @@ class Where:
 
     def fault(self, found: str, expected: str | None = None) -> InputError:
         """The error to raise for what was ``found`` here; ``expected`` says what would be right."""
-        return InputError(found, file=self.file, part=self.part, key=self.key, expected=expected)
+        return InputError(found, file=self.file, part=_tidy(self.part), key=_tidy(self.key), expected=expected)
+
+
+def _tidy(name: str | None) -> str | None:
+    """A name from the file on one line: quoted when it holds control characters, cut short when long."""
+    if name is None:
+        return None
+    text = name if name.isprintable() else repr(name)
+    return text if len(text) <= 100 else text[:97] + "…"
 
 
 def shown(raw: object) -> str:
@@ -32,6 +40,6 @@ def shown(raw: object) -> str:
         return "true" if raw else "false"
     try:
         text = repr(raw)
-    except ValueError:  # an integer of more digits than Python converts
-        return "a number of thousands of digits"
+    except (ValueError, RecursionError):  # an integer of more digits than Python converts, lists nested without end
+        return "what stands here"
     return text if len(text) <= 60 else text[:57] + "…"
