@@ -79,11 +79,11 @@ def _source_words(name: str) -> str:
 
 def _stiff_sources(circuit: Circuit) -> Iterator[tuple[str, str, str, float | None]]:
     """The sources without resistance: (name, plus, minus, volts; None for the take)."""
+    if circuit.input_ohms == 0.0:
+        yield "input", circuit.input_node, GROUND, None
     for name, plus, minus, volts in ideal_sources(circuit):
         if not (name == "supply" and circuit.supply is not None and circuit.supply.ohms > 0.0):
             yield name, plus, minus, volts
-    if circuit.input_ohms == 0.0:
-        yield "input", circuit.input_node, GROUND, None
 
 
 def _source_loops(circuit: Circuit) -> Iterator[Fault]:
@@ -103,6 +103,10 @@ def _source_loops(circuit: Circuit) -> Iterator[Fault]:
         else:
             words = "it stands in parallel with other sources, and none of them has a resistance"
             yield Fault(name, None, words, "put a resistance in series with one of them")
+    for node, _ in circuit.supply.rails if circuit.supply is not None and circuit.supply.ohms > 0.0 else ():
+        if shorts_only.same(node, circuit.supply.node):
+            words = "it is joined with the supply node that it is made from"
+            yield Fault(f"supply rail {node}", None, words, "leave a part between the two")
 
 
 def _sources_across_inductors(circuit: Circuit) -> Iterator[Fault]:
