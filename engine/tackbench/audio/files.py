@@ -86,7 +86,8 @@ def write_audio(
 
     ``subtype`` is PCM_16, PCM_24 or (WAV only) FLOAT. WAV becomes RF64 by itself beyond 4 GiB. Whole-number samples
     are dithered (see Quantizer). InputError when the place or format will not do or a sample would clip; WorkError
-    for a sample that is no finite number and for a full disk. Whatever happens, no part of a file is left.
+    for a sample that is no finite number, for no sample at all and for a full disk. Whatever happens, no part of a
+    file is left.
     """
     place = check_audio_output(path, rate, channels, subtype, overwrite)
     with written_beside(place, overwrite) as beside:
@@ -120,6 +121,8 @@ class _Checked:
             self.peak = max(self.peak, float(np.max(np.abs(samples), initial=0.0)))
             self.frames += len(samples)
             yield samples
+        if self.frames == 0:
+            raise WorkError(f"{self.place}: not written, for there is not one sample")
 
     def _check(self, samples: NDArray[np.float64]) -> None:
         if self.subtype == "FLOAT":
@@ -172,7 +175,8 @@ def _write_with_library(beside: Path, codes: _Encoded, checked: _Checked, form: 
                 _write_block(file, block, checked.place)
         written = soundfile.info(beside).frames
     except soundfile.SoundFileError as trouble:
-        raise WorkError(f"{checked.place}: could not be written ({str(trouble).rstrip('.')})") from None
+        reason = getattr(trouble, "error_string", str(trouble)).rstrip(".").lower()
+        raise WorkError(f"{checked.place}: could not be written ({reason}); is there room left?") from None
     if written != checked.frames:
         raise WorkError(f"{checked.place}: could not be written whole; is there room left on the disk?")
 

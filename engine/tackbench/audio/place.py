@@ -49,6 +49,8 @@ def check_folder(folder: Path) -> None:
 def check_output(path: str | os.PathLike[str], overwrite: bool = False) -> Path:
     """The place for a new file, asked before any work starts; InputError naming what is in the way."""
     place = Path(path)
+    if "\0" in str(place):
+        raise InputError("a file name cannot hold a zero byte", file=repr(str(place)))
     check_folder(place.parent)
     try:
         if place.is_dir():

@@ -17,6 +17,11 @@ _PCM, _FLOAT = 1, 3
 _RESERVED = 28
 
 
+def _is_long(size: int) -> bool:
+    """Whether the size of a file needs the 64 bits of RF64."""
+    return size > PLAIN_LIMIT
+
+
 class WaveWriter:
     """Writes interleaved little-endian sample bytes; a context manager. OSError passes."""
 
@@ -40,7 +45,7 @@ class WaveWriter:
         form = self._format()
         fact = b"fact" + struct.pack("<II", 4, min(frames, PLAIN_LIMIT)) if self._is_float else b""
         whole = 12 + 8 + _RESERVED + len(form) + len(fact) + 8 + self._data + self._data % 2
-        if whole - 8 <= PLAIN_LIMIT:
+        if not _is_long(whole - 8):
             name, size, data = b"RIFF", whole - 8, self._data
             reserved = b"JUNK" + struct.pack("<I", _RESERVED) + bytes(_RESERVED)
         else:
