@@ -1,0 +1,6 @@
+"""From a circuit to its equations: operating point, small-signal response, coefficient sets."""
+
+from tackbench.network.operating_point import OperatingPoint, operating_point
+from tackbench.network.small_signal import response
+
+__all__ = ["OperatingPoint", "operating_point", "response"]

@@ -1,0 +1,65 @@
+"""The circuit for small signals: its equations made linear at the operating point, exactly, not from rendered noise."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from tackbench.circuit import Circuit
+from tackbench.network.elements import TAKE
+from tackbench.network.model import NetworkModel, network_model
+from tackbench.network.operating_point import OperatingPoint, as_circuit, settle
+
+
+@dataclass(frozen=True)
+class SmallSignal:
+    """dX/dt = A X + b u, all node voltages = C X + d u; u is the take's voltage, all of them deviations from rest."""
+
+    A: np.ndarray
+    b: np.ndarray
+    C: np.ndarray
+    d: np.ndarray
+    output: int
+
+    def poles(self) -> np.ndarray:
+        """Natural frequencies in radians per second; one with a positive real part means that the stage oscillates."""
+        return np.asarray(np.linalg.eigvals(self.A))
+
+    def transfer(self, frequencies: np.ndarray, node: int) -> np.ndarray:
+        """Voltage of ``node`` per volt of the take at ``frequencies`` (hertz), complex, shape (frequencies,)."""
+        if node < 0:
+            return np.zeros(len(frequencies), dtype=complex)
+        n = len(self.A)
+        direct = np.full(len(frequencies), self.d[node], dtype=complex)
+        if n == 0:
+            return direct
+        systems = 2j * np.pi * frequencies[:, None, None] * np.eye(n) - self.A
+        states = np.linalg.solve(systems, np.broadcast_to(self.b[:, None], (len(frequencies), n, 1)))[..., 0]
+        return np.asarray(states @ self.C[node] + direct)
+
+
+def small_signal(model: NetworkModel, rest: OperatingPoint) -> SmallSignal:
+    """Make the equations of ``model`` linear at ``rest``."""
+    state, K = model.state, model.state.controls
+    _, slopes = model.bank.evaluate(rest.c)
+    root = state.F[:, :K] + state.F[:, K:] @ slopes
+    c_X = np.linalg.solve(root, state.R) if K else np.zeros((0, state.states))
+    c_u = np.linalg.solve(root, state.S[:, TAKE]) if K else np.zeros(0)
+    s_of_c = np.vstack([np.eye(K), slopes])
+    return SmallSignal(
+        A=state.A + state.B @ s_of_c @ c_X,
+        b=state.E[:, TAKE] + state.B @ s_of_c @ c_u,
+        C=state.nodes_X + state.nodes_s @ s_of_c @ c_X,
+        d=state.nodes_U[:, TAKE] + state.nodes_s @ s_of_c @ c_u,
+        output=model.assembly.elements.node(model.assembly.elements.circuit.output_node),
+    )
+
+
+def response(circuit: Circuit | object, frequencies: Sequence[float] | np.ndarray) -> np.ndarray:
+    """Small-signal response, output volts per volt of the take, complex, shape of ``frequencies`` (hertz)."""
+    model = network_model(as_circuit(circuit))
+    linear = small_signal(model, settle(model))
+    wanted = np.asarray(frequencies, dtype=float)
+    return linear.transfer(wanted.ravel(), linear.output).reshape(wanted.shape)
