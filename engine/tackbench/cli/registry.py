@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from importlib import import_module
-from typing import Any
 
 import click
 
@@ -30,8 +29,8 @@ class LateGroup(click.Group):
     def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
         if cmd_name not in COMMANDS:
             return None
-        found: Any = import_module(COMMANDS[cmd_name][0]).command
-        return found  # type: ignore[no-any-return]
+        found: click.Command = import_module(COMMANDS[cmd_name][0]).command
+        return found
 
     def resolve_command(
         self, ctx: click.Context, args: list[str]

@@ -9,7 +9,6 @@ import tempfile
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
-from typing import Any
 
 from tackbench.audio.names import safe_name
 from tackbench.audio.place import check_folder as check_writable
@@ -65,12 +64,12 @@ def files_of(folder: Path) -> set[str]:
         return set()
     entries = [data.get("bypass"), *(data.get("variants") or [])]
     names = {entry.get("file") for entry in entries if isinstance(entry, dict)}
-    return {name for name in names if _is_plain(name)} | {DATA_FILE, PAGE_FILE}
+    return {name for name in names if isinstance(name, str) and _is_plain(name)} | {DATA_FILE, PAGE_FILE}
 
 
-def _is_plain(name: Any) -> bool:
+def _is_plain(name: str) -> bool:
     """Whether this is one file's name, without a way out of the folder."""
-    return isinstance(name, str) and Path(name).name == name and name not in ("", ".", "..")
+    return Path(name).name == name and name not in ("", ".", "..")
 
 
 @contextmanager

@@ -22,7 +22,7 @@ _CLOSE_DB = 1e-4
 class Sound:
     """What matching must know of one file, on the take's own scale where 1.0 is a full-scale sample of the take.
 
-    ``loudness`` gives the integrated loudness after a gain: the gate of -70 LKFS makes that more than adding decibels.
+    ``loudness`` gives the integrated loudness after a gain: the gate of -70 LKFS makes that more than a sum.
     """
 
     loudness: Callable[[float], Loudness]

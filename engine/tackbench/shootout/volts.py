@@ -40,7 +40,8 @@ def render_volts(
 ) -> Volts:
     """Send the take through the variant and write its volts to ``scratch``, as many frames as the take has.
 
-    ``advance`` is told the frames of each block that is done, and may raise to end the work. Errors are led by the variant's ``words``.
+    ``advance`` is told the frames of each block that is done, and may raise to end the work. Errors are led by the
+    variant's ``words``.
     """
     began = time.thread_time()
     try:
