@@ -42,12 +42,11 @@ class DeviceBank:
         return np.array([len(LAWS[law].controls) for law in self.laws], dtype=np.int64)
 
     def evaluate(self, c: np.ndarray, supply: float = 1.0) -> tuple[np.ndarray, np.ndarray]:
-        """Currents (m,) and slopes (m, K) at the control voltages ``c`` with fixed rails at ``supply`` of their volts."""
+        """Currents (m,) and slopes (m, K) at the control voltages ``c``; fixed rails at ``supply`` of their volts."""
         parameters = self.parameters if supply == 1.0 else np.where(self.steady, supply, 1.0) * self.parameters
         j, own = np.zeros(self.currents), np.zeros((self.currents, MOST_CONTROLS))
-        evaluate_devices()(
-            self.laws, self.first_control, self.first_current, self.first_parameter, parameters, c, j, own
-        )
+        starts = self.first_control, self.first_current, self.first_parameter
+        evaluate_devices()(self.laws, *starts, parameters, c, j, own)
         slopes = np.zeros((self.currents, self.controls))
         for device, law in enumerate(self.laws):
             k, m = self.first_control[device], self.first_current[device]

@@ -34,6 +34,14 @@ _SIX_POINTS = np.linalg.inv(np.vander(np.arange(-2.0, 4.0), 6, increasing=True))
 _evaluate = evaluate_devices()
 
 
+def _value(power, t):
+    return ((((power[5] * t + power[4]) * t + power[3]) * t + power[2]) * t + power[1]) * t + power[0]
+
+
+def _slope(power, t):
+    return (((5.0 * power[5] * t + 4.0 * power[4]) * t + 3.0 * power[3]) * t + 2.0 * power[2]) * t + power[1]
+
+
 def _factor(a, order):
     """LU with row pivoting, in place; False when singular."""
     n = a.shape[0]
@@ -62,8 +70,8 @@ def _substitute(a, order, b):
     """Solve with the factors of ``_factor``, in place."""
     n = a.shape[0]
     for k in range(n):
-        if order[k] != k:
-            b[k], b[order[k]] = b[order[k]], b[k]
+        b[k], b[order[k]] = b[order[k]], b[k]
+    for k in range(n):
         for i in range(k + 1, n):
             b[i] -= a[i, k] * b[k]
     for k in range(n - 1, -1, -1):
@@ -181,11 +189,14 @@ def _homotopy(
 
 
 def _slopes(
-    X, s, g, u, u_slope, A, B, E, Y0, N0, R0, S0, first_control, first_current, control_of, current_of,
-    X_slope, s_slope, jacobian, order, right,
+    X, s, g, u, u_slope, A, B, E, R0, S0, first_control, first_current, control_of, current_of,
+    X_slope, s_slope, rest_factors, rest_order, right,
 ):  # fmt: skip
-    """dX/dt from the state equations, dc/dt by differentiating the root's equations, dj/dt = (dj/dc) dc/dt."""
-    n, K = X.size, Y0.shape[0]
+    """dX/dt from the state equations, dc/dt by differentiating the root's equations, dj/dt = (dj/dc) dc/dt.
+
+    ``rest_factors`` are those of the root's equations for a step of no length.
+    """
+    n, K = X.size, right.size
     for row in range(n):
         total = E[row, 0] * u + E[row, 1]
         for column in range(n):
@@ -198,26 +209,43 @@ def _slopes(
         for column in range(n):
             total += R0[row, column] * X_slope[column]
         right[row] = total
-    if K == 0:
-        return
-    _jacobian(Y0, N0, g, first_control, first_current, control_of, current_of, jacobian)
-    if _factor(jacobian, order):
-        _substitute(jacobian, order, right)
-    else:
-        right[:] = 0.0
+    _substitute(rest_factors, rest_order, right)
+    _with_currents(right, g, first_control, first_current, control_of, current_of, s_slope)
+
+
+def _with_currents(c, g, first_control, first_current, control_of, current_of, s):
+    """s = (c, (dj/dc) c): small changes of the controls and the changes of the currents that follow."""
+    K = c.size
     for k in range(K):
-        s_slope[k] = right[k]
+        s[k] = c[k]
     for device in range(first_control.size):
         k, m = first_control[device], first_current[device]
         for current in range(current_of[device]):
             total = 0.0
             for control in range(control_of[device]):
-                total += g[m + current, control] * right[k + control]
-            s_slope[K + m + current] = total
+                total += g[m + current, control] * c[k + control]
+            s[K + m + current] = total
+
+
+def _close(error, R, Q, g, first_control, first_current, control_of, current_of, factors, order, e_c, e_s):
+    """Turn an error of the open step into the one that the root lets through: error += Q e_s, in place.
+
+    ``factors`` are those of the root's Jacobian; ``e_s`` becomes the change of (c, j).
+    """
+    for row in range(e_c.size):
+        total = 0.0
+        for column in range(error.size):
+            total += R[row, column] * error[column]
+        e_c[row] = total
+    _substitute(factors, order, e_c)
+    _with_currents(e_c, g, first_control, first_current, control_of, current_of, e_s)
+    for row in range(error.size):
+        for column in range(e_s.size):
+            error[row] += Q[row, column] * e_s[column]
 
 
 _ARRAYS = "float64[::1], float64[::1], float64[::1], float64[::1], float64[::1], float64[::1], int64[::1]"
-_SETS = "float64[:, :, ::1], " * 4 + "float64[:, :, ::1], float64[:, :, ::1], float64[:, ::1], float64[:, :, ::1]"
+_SETS = "float64[:, :, ::1], " * 7 + "float64[:, ::1], float64[:, :, ::1]"
 _REST = "float64[:, ::1], " * 6 + "float64[::1], float64[::1], float64[::1], float64[::1]"
 _BANK = "int64[::1], int64[::1], int64[::1], int64[::1], float64[::1], int64[::1], int64[::1]"
 _LIMITS = "float64[::1], float64[::1], float64[::1]"
@@ -226,29 +254,47 @@ _CHOICES = "float64, int64, int64, float64, float64[::1], int64[::1], float64[::
 
 @njit_cached(
     f"int64({_ARRAYS}, {_SETS}, {_REST}, {_BANK}, {_LIMITS}, {_CHOICES})",
-    inner=(_evaluate, _factor, _substitute, _jacobian, _leap, _newton, _homotopy, _slopes),
+    inner=(
+        _evaluate,
+        _value,
+        _slope,
+        _factor,
+        _substitute,
+        _jacobian,
+        _leap,
+        _newton,
+        _homotopy,
+        _with_currents,
+        _slopes,
+        _close,
+    ),
 )
 def advance(
     u, out, X, s, X_slope, s_slope, level_and_place,
-    H, Y, N, Q, error_X, error_s, error_u, error_R,
+    H, Y, N, Q, R, error_X, error_s, error_u, smoothing,
     A, B, E, Y0, N0, R0, S0, out_X, out_s, out_U,
     laws, first_control, first_current, first_parameter, p, control_of, current_of,
     scales, high, low,
     base_step, coarsest, finest, tolerance, weights, counts, fault,
 ):  # fmt: skip
-    """Cross ``u.size - 5`` base intervals; write eight output points for each. Returns 0, or 1 with ``fault`` set.
+    """Cross ``u.size - 5`` base intervals and write eight output points for each; returns 0, or 1 with ``fault`` set.
 
     ``fault`` is then (base interval, place within it, control that did not settle). ``weights`` turn states into volts
-    for ``tolerance`` (volts); an infinite tolerance keeps to the level ``coarsest``.
+    for ``tolerance`` (volts); an infinite tolerance keeps to the level ``coarsest`` and to the bare rule. Otherwise
+    the estimated local error is taken off, smoothed twice by the step's own Jacobian: that makes the rule third order
+    and damps what the trapezoid would let ring (its growth at infinite stiffness falls from -1 to -1/3).
     """
     n, K, m = X.size, scales.size, s.size - scales.size
     width = n + K + m + 5
     history, target, X1, X1_slope = np.empty(width), np.empty(K + n), np.empty(n), np.empty(n)
-    s1, s1_slope, error = np.empty(K + m), np.zeros(K + m), np.empty(n)
+    s1, s1_slope, e_s = np.empty(K + m), np.zeros(K + m), np.empty(K + m)
+    error, correction = np.empty(n), np.empty(n)
     g = np.zeros((m, MOST_CONTROLS))
     jacobian, order, step = np.empty((K, K)), np.empty(K, np.int64), np.empty(K)
+    rest_factors, rest_order = np.empty((K, K)), np.empty(K, np.int64)
     r, e_c, trial_c, trial_j = np.empty(K), np.empty(K), np.empty(K), np.empty(m)
     power = np.empty(6)
+    per_base, controlled = 1.0 / base_step, tolerance < np.inf
     last = H.shape[0] - 1
     whole = 1 << last
     dense_stride = whole // DENSE
@@ -264,14 +310,9 @@ def advance(
             span = 1 << (last - level)
             h = base_step * span / whole
             t0, t1 = place / whole, (place + span) / whole
-            u0 = ((((power[5] * t0 + power[4]) * t0 + power[3]) * t0 + power[2]) * t0 + power[1]) * t0 + power[0]
-            u1 = ((((power[5] * t1 + power[4]) * t1 + power[3]) * t1 + power[2]) * t1 + power[1]) * t1 + power[0]
-            du0 = (((5.0 * power[5] * t0 + 4.0 * power[4]) * t0 + 3.0 * power[3]) * t0 + 2.0 * power[2]) * t0 + power[
-                1
-            ]
-            du1 = (((5.0 * power[5] * t1 + 4.0 * power[4]) * t1 + 3.0 * power[3]) * t1 + 2.0 * power[2]) * t1 + power[
-                1
-            ]
+            u0, u1 = _value(power, t0), _value(power, t1)
+            du0 = _slope(power, t0)
+            du1 = _slope(power, t1)
 
             # the incident waves: everything that is known at the start of the step
             for k in range(n):
@@ -332,61 +373,71 @@ def advance(
                     total += Q[level, row, column] * s1[column]
                 X1[row] = total
 
-            # the factors of the last Jacobian turn the open local error into the one that the root lets through
-            scale_slope = 1.0 / (base_step)
-            if tolerance < np.inf:
-                factors, factor_order = jacobian.copy(), order.copy()
-            else:
-                factors, factor_order = jacobian, order
+            # slopes at the end of the step
+            _jacobian(Y0, N0, g, first_control, first_current, control_of, current_of, rest_factors)
+            if not _factor(rest_factors, rest_order):
+                for row in range(K):
+                    for column in range(K):
+                        rest_factors[row, column] = 1.0 if row == column else 0.0
+                    rest_order[row] = row
             _slopes(
-                X1, s1, g, u1, du1 * scale_slope, A, B, E, Y0, N0, R0, S0, first_control, first_current,
-                control_of, current_of, X1_slope, s1_slope, jacobian, order, e_c,
+                X1, s1, g, u1, du1 * per_base, A, B, E, R0, S0, first_control, first_current, control_of,
+                current_of, X1_slope, s1_slope, rest_factors, rest_order, e_c,
             )  # fmt: skip
-            if tolerance < np.inf:
+
+            # the local error, from how much the slopes change; then, smoothed once more, it is taken off
+            ratio = 0.0
+            if controlled:
                 for row in range(n):
-                    total = error_u[level, row] * (du0 - du1) * scale_slope
+                    total = error_u[level, row] * (du0 - du1) * per_base
                     for column in range(n):
                         total += error_X[level, row, column] * (X_slope[column] - X1_slope[column])
                     for column in range(K + m):
                         total += error_s[level, row, column] * (s_slope[column] - s1_slope[column])
                     error[row] = total
-                for row in range(K):
-                    total = 0.0
-                    for column in range(n):
-                        total += error_R[level, row, column] * error[column]
-                    e_c[row] = total
-                if K > 0:
-                    _substitute(factors, factor_order, e_c)
+                _close(
+                    error, R[level], Q[level], g, first_control, first_current, control_of, current_of,
+                    jacobian, order, e_c, e_s,
+                )  # fmt: skip
+                y_error = 0.0
                 for row in range(n):
-                    total = error[row]
-                    for k in range(K):
-                        total += Q[level, row, k] * e_c[k]
-                    for device in range(laws.size):
-                        k0, m0 = first_control[device], first_current[device]
-                        for current in range(current_of[device]):
-                            weight = Q[level, row, K + m0 + current]
-                            for control in range(control_of[device]):
-                                total += weight * g[m0 + current, control] * e_c[k0 + control]
-                    error[row] = total
-                ratio = 0.0
-                for row in range(n):
+                    y_error += out_X[row] * error[row]
                     size = abs(error[row]) * weights[row] / tolerance
                     if not size <= ratio:
                         ratio = size
-                if ratio > 1.0 or ratio != ratio:
+                for row in range(K + m):
+                    y_error += out_s[row] * e_s[row]
+                if not abs(y_error) / tolerance <= ratio:
+                    ratio = abs(y_error) / tolerance
+                if not ratio <= 1.0:
                     if level < finest:
                         level += 1
                         counts[REPEATED] += 1
                         continue
                     counts[CAPPED] += 1
-            else:
-                ratio = 0.0
+                for row in range(n):
+                    total = 0.0
+                    for column in range(n):
+                        total += smoothing[level, row, column] * error[column]
+                    correction[row] = total
+                _close(
+                    correction, R[level], Q[level], g, first_control, first_current, control_of, current_of,
+                    jacobian, order, e_c, e_s,
+                )  # fmt: skip
+                for row in range(n):
+                    X1[row] += correction[row]
+                for row in range(K + m):
+                    s1[row] += e_s[row]
+                _slopes(
+                    X1, s1, g, u1, du1 * per_base, A, B, E, R0, S0, first_control, first_current, control_of,
+                    current_of, X1_slope, s1_slope, rest_factors, rest_order, e_c,
+                )  # fmt: skip
 
             # the output between the ends of the step: a cubic through values and slopes
             while next_dense <= DENSE and next_dense * dense_stride <= place + span:
                 theta = (next_dense * dense_stride - place) / span
                 y0, y1 = out_U[0] * u0 + out_U[1], out_U[0] * u1 + out_U[1]
-                d0, d1 = out_U[0] * du0 * scale_slope, out_U[0] * du1 * scale_slope
+                d0, d1 = out_U[0] * du0 * per_base, out_U[0] * du1 * per_base
                 for k in range(n):
                     y0 += out_X[k] * X[k]
                     y1 += out_X[k] * X1[k]

@@ -1,4 +1,4 @@
-"""The equations of a circuit as matrices, before anything is solved: currents at the free nodes, and what drives them.
+"""The equations of a circuit as matrices, before anything is solved: node currents and what drives them.
 
 Every node obeys: G v + Gu U + Gw w + (inductor currents) + (device currents) + (capacitor currents) = 0, with v the
 free node voltages, U = (take, 1) and w the op-amps' internal voltages. Ideal sources are solved out of the node

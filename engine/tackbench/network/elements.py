@@ -265,7 +265,7 @@ _SEMICONDUCTORS = {"diode": _add_diode, "bipolar": _add_bipolar, "jfet": _add_jf
 
 
 def _add_opamp(elements: Elements, part: Part, fixed: Mapping[int, float]) -> None:
-    plus, minus, out, high, low = (elements.node(name) for name in part.pins)
+    plus, minus, _, high, low = (elements.node(name) for name in part.pins)
     parameters = part.parameters
     w = len(elements.internals)
     elements.internals.append(part.ref)

@@ -185,8 +185,9 @@ def _draw(model: NetworkModel, ref: str, index: int, node: int, at: object, inte
     across = [internals[index] - at(out)]  # type: ignore[operator]
     if "output_current" in parameters:
         constants = (parameters["output_current"], parameters["output_ohms"], parameters["supply_current"])
-        _, positive, negative = opamp.limited_output_draws(NUMBERS, across, constants)
+        positive, negative = opamp.limited_output_draws(NUMBERS, across, constants)[1:]
     else:
-        constants = (parameters["output_ohms"], parameters["supply_current"])
-        positive, negative = opamp.rail_draws(NUMBERS, across, constants)
+        positive, negative = opamp.rail_draws(
+            NUMBERS, across, (parameters["output_ohms"], parameters["supply_current"])
+        )
     return float(positive * (node == high) - negative * (node == low))

@@ -8,7 +8,9 @@ Both rules make the same kernel step. With the history z = (X0, c0, j0, u0, u1, 
 The *wave-digital trapezoid*: each capacitor and inductor is a wave port. Its incident wave is X0 + (h/2) X0' (voltage
 plus port resistance h/2C times current, for a capacitor), and the scattering junction gives X1 from the waves and the
 root's c, j. It is passive by construction. The *exact linear rule* carries the linear network by its matrix
-exponential; only the devices' part is interpolated, linearly, within a step, and the take by a cubic.
+exponential; only the devices' part is interpolated, linearly, within a step, and the take by a cubic. Measured side
+by side the trapezoid with its estimated error taken off (see the kernel) needs fewer steps for the same error on
+every clipping circuit tried; the exact rule is kept as the second opinion that the tests hold it to.
 """
 
 from __future__ import annotations
@@ -26,10 +28,7 @@ _WELL_CONDITIONED = 1e7
 
 @dataclass(frozen=True)
 class RootForm:
-    """State equations with the linear part of chosen laws moved into the network.
-
-    In terms of s~ = (c, j - G c), G being ``extracted``: dX/dt = A X + B s~ + E U and F s~ = R X + S U.
-    """
+    """State equations with the controls solved out of them where that is well conditioned (then F begins with 1)."""
 
     A: np.ndarray
     B: np.ndarray
@@ -37,40 +36,30 @@ class RootForm:
     F: np.ndarray
     R: np.ndarray
     S: np.ndarray
-    extracted: np.ndarray
-
-    @property
-    def to_remainder(self) -> np.ndarray:
-        """The matrix that takes (c, j) to (c, j - G c)."""
-        m, K = self.extracted.shape
-        return np.block([[np.eye(K), np.zeros((K, m))], [-self.extracted, np.eye(m)]])
 
 
-def root_form(state: StateEquations, extracted: np.ndarray) -> RootForm:
-    """Move j = G c of the chosen laws into the network, and solve the controls out where that is well conditioned."""
-    K = state.controls
-    B, F = state.B.copy(), state.F.copy()
-    B[:, :K] += B[:, K:] @ extracted
-    F[:, :K] += F[:, K:] @ extracted
-    A, E, R, S = state.A, state.E, state.R, state.S
-    if K and np.linalg.cond(F[:, :K]) < _WELL_CONDITIONED:
-        solved = np.linalg.solve(F[:, :K], np.hstack([F[:, K:], R, S]))
-        m, n = extracted.shape[0], state.states
-        Fj, R, S = solved[:, :m], solved[:, m : m + n], solved[:, m + n :]
-        A, E = A + B[:, :K] @ R, E + B[:, :K] @ S
-        B = np.hstack([np.zeros((n, K)), B[:, K:] - B[:, :K] @ Fj])
-        F = np.hstack([np.eye(K), Fj])
-    return RootForm(A, B, E, F, R, S, extracted)
+def root_form(state: StateEquations) -> RootForm:
+    """Bring the root's equations to c = …, unless a node hangs on so little that this would be all rounding."""
+    K, n = state.controls, state.states
+    A, B, E, F, R, S = state.A, state.B, state.E, state.F, state.R, state.S
+    if not K or np.linalg.cond(F[:, :K]) > _WELL_CONDITIONED:
+        return RootForm(A, B, E, F, R, S)
+    solved = np.linalg.solve(F[:, :K], np.hstack([F[:, K:], R, S]))
+    m = state.currents
+    Fj, R, S = solved[:, :m], solved[:, m : m + n], solved[:, m + n :]
+    A, E = A + B[:, :K] @ R, E + B[:, :K] @ S
+    B = np.hstack([np.zeros((n, K)), B[:, K:] - B[:, :K] @ Fj])
+    return RootForm(A, B, E, np.hstack([np.eye(K), Fj]), R, S)
 
 
 @dataclass(frozen=True)
 class CoefficientSets:
     """One step for every length h = base / 2^level; arrays start with the level.
 
-    ``H`` (levels, K + n, n + K + m + 5): rows Hr, then Hx. ``Y`` (levels, K, K), ``N`` (levels, K, m), ``Q`` (levels,
-    n, K + m). ``error_X`` (levels, n, n), ``error_s`` (levels, n, K + m), ``error_u`` (levels, n): the local error of
-    X from what X', s' and u' change by over a step. ``R`` (levels, K, n): how a change of X drives the root.
-    ``rule`` is "exact" or "trapezoid".
+    ``H`` (levels, K + n, n + K + m + 5): rows Hr, then Hx. ``Y`` (levels, K, K), ``N`` (levels, K, m), ``Q``
+    (levels, n, K + m). ``R`` (levels, K, n): how a change of X drives the root. ``error_X`` (levels, n, n),
+    ``error_s`` (levels, n, K + m), ``error_u`` (levels, n): the local error of X from what X', s' and u' change by
+    over a step. ``smoothing`` (levels, n, n) damps what is stiff in it. ``rule`` is "exact" or "trapezoid".
     """
 
     rule: str
@@ -78,10 +67,11 @@ class CoefficientSets:
     Y: np.ndarray
     N: np.ndarray
     Q: np.ndarray
+    R: np.ndarray
     error_X: np.ndarray
     error_s: np.ndarray
     error_u: np.ndarray
-    R: np.ndarray
+    smoothing: np.ndarray
 
 
 def coefficient_sets(form: RootForm, base_step: float, levels: int, rule: str) -> CoefficientSets:
@@ -94,7 +84,7 @@ def coefficient_sets(form: RootForm, base_step: float, levels: int, rule: str) -
         rule = "trapezoid"
     steps = [base_step / 2**level for level in range(levels)]
     make = _exact_step if rule == "exact" else _trapezoid_step
-    phis = phi_functions(form.A, steps[-1], levels)[::-1] if rule == "exact" else [None] * levels
+    phis = phi_functions(form.A, steps[-1], levels)[::-1] if rule == "exact" else [[]] * levels
     sets = [make(form, h, phi) for h, phi in zip(steps, phis, strict=True)]
     return CoefficientSets(rule, *(np.ascontiguousarray(np.stack(arrays)) for arrays in zip(*sets, strict=True)))
 
@@ -102,8 +92,8 @@ def coefficient_sets(form: RootForm, base_step: float, levels: int, rule: str) -
 def phi_functions(A: np.ndarray, smallest_step: float, doublings: int) -> list[list[np.ndarray]]:
     """phi_0 … phi_4 of A h for h = smallest_step · 1, 2, 4, …, by Taylor series and doubling.
 
-    phi_k(z) = sum z^i / (i + k)!. Doubling: phi_k(2z) = 2^-k (phi_0 phi_k + sum_j phi_j / (k - j)!), see Skaflestad and
-    Wright, "The scaling and modified squaring method for matrix functions related to the exponential", 2009.
+    phi_k(z) = sum z^i / (i + k)!. Doubling: phi_k(2z) = 2^-k (phi_0 phi_k + sum_j phi_j / (k - j)!), see Skaflestad
+    and Wright, "The scaling and modified squaring method for matrix functions related to the exponential", 2009.
     phi_0 is always formed as I + z phi_1, so that slow modes keep their relative accuracy beside stiff ones.
     """
     n = len(A)
@@ -152,10 +142,10 @@ def _exact_step(form: RootForm, h: float, phi: list[np.ndarray]) -> tuple[np.nda
     )
     error_s = 0.5 * h * (m1 - m2) @ form.B
     nothing = np.zeros_like(form.A), np.zeros(len(form.A))
-    return _finish(form, phi[0], (m0 - m1) @ form.B, m1 @ form.B, from_u, nothing[0], error_s, nothing[1])
+    return _finish(form, phi[0], (m0 - m1) @ form.B, m1 @ form.B, from_u, nothing[0], error_s, nothing[1], phi[1])
 
 
-def _trapezoid_step(form: RootForm, h: float, _: object) -> tuple[np.ndarray, ...]:
+def _trapezoid_step(form: RootForm, h: float, _: list[np.ndarray]) -> tuple[np.ndarray, ...]:
     n = len(form.A)
     junction = np.linalg.inv(np.eye(n) - 0.5 * h * form.A)
     carried = junction @ (np.eye(n) + 0.5 * h * form.A)  # of X0: the incident wave's part
@@ -165,7 +155,7 @@ def _trapezoid_step(form: RootForm, h: float, _: object) -> tuple[np.ndarray, ..
     from_u = np.column_stack([take, take, zero, zero, 2.0 * steady])
     weight = (h * h / 12.0) * junction
     errors = weight @ form.A, weight @ form.B, weight @ form.E[:, 0]
-    return _finish(form, carried, driven @ form.B, driven @ form.B, from_u, *errors)
+    return _finish(form, carried, driven @ form.B, driven @ form.B, from_u, *errors, junction)
 
 
 def _finish(
@@ -174,19 +164,15 @@ def _finish(
     from_s0: np.ndarray,
     from_s1: np.ndarray,
     from_u: np.ndarray,
-    error_X: np.ndarray,
-    error_s: np.ndarray,
-    error_u: np.ndarray,
+    *estimate: np.ndarray,
 ) -> tuple[np.ndarray, ...]:
-    """Put the root's equations F s1 = R X1 + S U1 on top of the step, and go back from remainders to true currents."""
+    """Put the root's equations F s1 = R X1 + S U1 on top of the step, each scaled to a largest term of one."""
     K = len(form.R)
-    to_remainder = form.to_remainder
-    Hx = np.hstack([from_X, from_s0 @ to_remainder, from_u])
+    Hx = np.hstack([from_X, from_s0, from_u])
     Hr = form.R @ Hx
     Hr[:, -4] += form.S[:, 0]  # u1
     Hr[:, -1] += form.S[:, 1]
-    root = (form.F - form.R @ from_s1) @ to_remainder
+    root = form.F - form.R @ from_s1
     scale = np.max(np.abs(root), axis=1, keepdims=True) if K else np.ones((0, 1))
     H = np.vstack([Hr / scale, Hx])
-    Q = from_s1 @ to_remainder
-    return H, root[:, :K] / scale, root[:, K:] / scale, Q, error_X, error_s @ to_remainder, error_u, form.R / scale
+    return H, root[:, :K] / scale, root[:, K:] / scale, from_s1, form.R / scale, *estimate

@@ -1,4 +1,4 @@
-"""The circuit for small signals: its equations made linear at the operating point, exactly, not from rendered noise."""
+"""The circuit for small signals: its equations made linear, exactly, at the operating point."""
 
 from __future__ import annotations
 
@@ -15,7 +15,7 @@ from tackbench.network.operating_point import OperatingPoint, as_circuit, settle
 
 @dataclass(frozen=True)
 class SmallSignal:
-    """dX/dt = A X + b u, all node voltages = C X + d u; u is the take's voltage, all of them deviations from rest."""
+    """dX/dt = A X + b u, all node voltages = C X + d u; u is the take's voltage, all are deviations from rest."""
 
     A: np.ndarray
     b: np.ndarray

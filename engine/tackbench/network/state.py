@@ -1,7 +1,7 @@
 """State equations: the least set of capacitor voltages and inductor currents, and how the devices act on them.
 
-Capacitor loops, capacitors across ideal sources and inductor cutsets hold fewer independent voltages and currents than
-they have parts; ranks of the connection matrices (whole numbers, so no rounding decides) say how many. With the state
+Capacitor loops, capacitors across ideal sources and inductor cutsets hold fewer independent voltages and currents
+than parts; ranks of the connection matrices (whole numbers, so no rounding decides) say how many. With the state
 X = (capacitor voltages less what the sources impose, inductor currents, op-amp internals), s = (c, j) the devices'
 control voltages and currents, and U = (take, 1):
 
@@ -53,7 +53,7 @@ class StateEquations:
 
 @dataclass(frozen=True)
 class _Basis:
-    """Independent capacitor voltages x and floating voltages q: v = tree x + floating q; inductors i = loops · i_x."""
+    """Independent capacitor voltages x, floating voltages q: v = tree x + floating q; inductors i = loops · i_x."""
 
     tree: np.ndarray
     floating: np.ndarray

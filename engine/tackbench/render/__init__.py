@@ -1,7 +1,7 @@
 """Takes times variants to volts."""
 
 from tackbench.compiled import kernels_are_cached
-from tackbench.render.prepare import NUMERICS, QUALITIES, PreparedStage, prepare
+from tackbench.render.prepared import NUMERICS, QUALITIES, PreparedStage, prepare
 from tackbench.render.stream import SolveCounts, StageStream
 from tackbench.render.whole import render, warm_up
 

@@ -9,7 +9,7 @@ import numpy as np
 from tackbench.audio.resample import Downsampler, Upsampler
 from tackbench.errors import WorkError
 from tackbench.kernel import plain
-from tackbench.render.prepare import PreparedStage
+from tackbench.render.prepared import PreparedStage
 
 _CHUNK = 256  # take samples per call of the kernel: short enough that Ctrl-C is answered at once
 

@@ -9,7 +9,7 @@ import numpy as np
 from tackbench.circuit import Circuit, Part
 from tackbench.compiled import seconds_spent_compiling
 from tackbench.network.operating_point import as_circuit
-from tackbench.render.prepare import prepare
+from tackbench.render.prepared import prepare
 
 _BLOCK = 4096
 

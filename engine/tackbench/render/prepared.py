@@ -1,11 +1,11 @@
-"""A stage made ready to be streamed through: operating point, coefficient sets, and the arrays that the kernel reads."""
+"""A stage made ready to be streamed through: operating point, coefficient sets, the arrays that the kernel reads."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -14,10 +14,12 @@ from tackbench.circuit import Circuit
 from tackbench.devices.table import LAWS
 from tackbench.errors import InputError, nearest
 from tackbench.kernel.plain import EMERGENCY_LEVELS
-from tackbench.network.linear_part import linear_part
 from tackbench.network.model import NetworkModel, network_model
 from tackbench.network.operating_point import OperatingPoint, settle
 from tackbench.network.rules import CoefficientSets, coefficient_sets, root_form
+
+if TYPE_CHECKING:
+    from tackbench.render.stream import StageStream
 
 NUMERICS = 1
 """Rises whenever a rendered sample may change."""
@@ -37,8 +39,8 @@ class Quality:
 QUALITY_STEPS: Mapping[str, Quality] = MappingProxyType(
     {
         "draft": Quality("trapezoid", 1, 1, float("inf")),
-        "standard": Quality("exact", 0, 6, 1e-5),
-        "best": Quality("exact", 0, 8, 1e-6),
+        "standard": Quality("trapezoid", 0, 8, 5e-5),
+        "best": Quality("trapezoid", 0, 9, 7e-6),
     }
 )
 QUALITIES = tuple(QUALITY_STEPS)
@@ -85,7 +87,7 @@ def prepare_with(circuit: Circuit, rate: int, quality: Quality) -> PreparedStage
     factor = base_factor(rate)
     model = network_model(circuit)
     rest = settle(model)
-    form = root_form(model.state, linear_part(model, rest.c))
+    form = root_form(model.state)
     base_step = 1.0 / (rate * factor)
     levels = max(quality.finest, EMERGENCY_LEVELS) + 1
     sets = coefficient_sets(form, base_step, levels, quality.rule)
@@ -128,7 +130,7 @@ def _kernel_arrays(
     exact = (state.A, state.B, state.E, state.F[:, :K], state.F[:, K:], state.R, state.S[:, 0])
     current_of = np.array([len(LAWS[law].currents) for law in bank.laws], dtype=np.int64)
     return (
-        sets.H, sets.Y, sets.N, sets.Q, sets.error_X, sets.error_s, sets.error_u, sets.R,
+        sets.H, sets.Y, sets.N, sets.Q, sets.R, sets.error_X, sets.error_s, sets.error_u, sets.smoothing,
         *(np.ascontiguousarray(matrix) for matrix in exact),
         *output,
         bank.laws, bank.first_control, bank.first_current, bank.first_parameter, bank.parameters,
