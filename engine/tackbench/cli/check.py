@@ -6,13 +6,14 @@ from collections.abc import Iterator
 
 import click
 
+from tackbench.circuit import GROUND
 from tackbench.cli.corners import HIGHEST, LOWEST, Corners, corners, frequencies
 from tackbench.cli.options import pairs_from, stage_option, with_option
 from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
 from tackbench.errors import InputError
 from tackbench.network import OperatingPoint, operating_point, response
-from tackbench.shootout.plan import read_choices
+from tackbench.shootout import read_choices
 from tackbench.stage import Variant, load_stage
 from tackbench.values import format_quantity
 
@@ -41,6 +42,8 @@ def _report(variant: Variant, rest: OperatingPoint, shape: Corners | None) -> It
     yield f"{variant.stage.name}: {variant.words() or 'as built'}: sound"
     yield "\nResting voltages (take silent)"
     for node, volts in rest.node_volts.items():
+        if node == GROUND:
+            continue
         yield f"  {node.ljust(12)} {volts:9.3f} V"
     for ref, volts in rest.opamp_out.items():
         yield f"  {(ref + ' output').ljust(12)} {volts:9.3f} V"

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import signal
 import sys
 from collections.abc import Sequence
 from typing import NoReturn
@@ -19,7 +20,13 @@ INTERRUPTED = 130
 
 def main() -> NoReturn:
     """Run the command line of this process and exit with its status."""
+    signal.signal(signal.SIGTERM, _terminated)
     sys.exit(run())
+
+
+def _terminated(number: int, frame: object) -> NoReturn:
+    """Asked to end: unwind, so that unfinished files go, and exit as shells expect after this signal."""
+    raise SystemExit(128 + number)
 
 
 def run(arguments: Sequence[str] | None = None) -> int:

@@ -53,7 +53,7 @@ def variant_entry(
         "dc_volts": volts.rest,
         "level_against_bypass_db": None if silent else _difference(loudness.lufs, looked.loudness.integrated().lufs),
         **_gain(gain, volts.levels.true_peak / scale, scale),
-        "polarity": None if silent else written.polarity,
+        "polarity": None if silent else volts.polarity,
         "correlation": written.correlation,
         "loudness_lufs": loudness.lufs,
         "seconds": volts.seconds,

@@ -31,6 +31,7 @@ class Plan:
     merged: int
     left_out: tuple[str, ...]
     question: str
+    grid: bool = False
 
     @property
     def reference(self) -> Variant:
@@ -73,7 +74,7 @@ def make_plan(
         return _offer(stage, chosen, grid)
     options = _product(axes) if grid else [option for axis in axes for option in axis.options]
     kind = "every combination of " if grid and len(axes) > 1 else ""
-    return _plan(stage, chosen, options, (), kind + " and ".join(axis.key for axis in axes))
+    return _plan(stage, chosen, options, kind + " and ".join(axis.key for axis in axes), grid=grid)
 
 
 def read_choices(stage: Stage, pairs: Iterable[tuple[str, Any]]) -> dict[str, Any]:
@@ -145,16 +146,21 @@ def _offer(stage: Stage, chosen: Choices, grid: bool) -> Plan:
         base = {**read_choices(stage, questions.base.items()), **chosen}
         axes = [_axis(stage, key, values) for key, values in questions.grid.items() if key not in chosen]
         if axes:
-            return _plan(stage, base, _product(axes), (), questions.words)
+            return _plan(stage, base, _product(axes), questions.words, grid=True)
     if grid:
         raise InputError("nothing to make a grid of", expected="say what to try, --try KEY=VALUE,VALUE")
     tried, left_out = offered_for(stage, chosen)
     options = [_read(stage, key, value) for key, value in tried]
-    return _plan(stage, chosen, options, left_out, "one change at a time" if options else "the stage alone")
+    return _plan(stage, chosen, options, "one change at a time" if options else "the stage alone", left_out)
 
 
 def _plan(
-    stage: Stage, chosen: Choices, options: Sequence[Choices], left_out: tuple[str, ...], question: str
+    stage: Stage,
+    chosen: Choices,
+    options: Sequence[Choices],
+    question: str,
+    left_out: tuple[str, ...] = (),
+    grid: bool = False,
 ) -> Plan:
     """The reference and every option against it, each circuit once."""
     reference = stage.variant(chosen)
@@ -164,4 +170,26 @@ def _plan(
         if all(variant.circuit != other.circuit for other in tried):
             tried.append(variant)
     others = (variant for variant in tried if variant.circuit != reference.circuit)
-    return Plan(stage, (reference, *others), len(options) - len(tried), left_out, question)
+    return Plan(stage, (reference, *others), len(options) - len(tried), left_out, question, grid)
+
+
+def words_of(plan: Plan) -> list[str]:
+    """Each variant in words: the reference by all that is tried, the others by what they change of it.
+
+    In a grid every variant is named by all that is tried, as far as that can be said without naming old values.
+    """
+    reference, *others = plan.variants
+    changes = [variant.words(reference) for variant in others]
+    if plan.grid:
+        changes = [_whole(variant, plan.variants, change) for variant, change in zip(others, changes, strict=True)]
+    chosen = reference.words()
+    if chosen != plan.stage.variant().words():
+        return [chosen, *changes]
+    whole = _whole(reference, plan.variants, "")
+    return [f"{chosen}: {whole}" if whole else chosen, *changes]
+
+
+def _whole(variant: Variant, among: Sequence[Variant], otherwise: str) -> str:
+    """The variant against the one that differs most; ``otherwise`` where a part's old value would be named."""
+    words = max((variant.words(other) for other in among if other is not variant), key=len, default="")
+    return otherwise if not words or "→" in words else words

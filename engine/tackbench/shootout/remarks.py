@@ -33,7 +33,8 @@ def _shared(entries: Sequence[Mapping[str, Any]]) -> Iterator[str]:
     for entry in entries:
         for note in entry["notes"]:
             about.setdefault(note, []).append(entry["words"])
-    for note, words in about.items():
+    for note in sorted(about, key=lambda note: "from memory" in note):  # the parts' figures concern least
+        words = about[note]
         yield note if len(words) == len(entries) else f"{_some(words)}: {note}"
 
 

@@ -32,13 +32,13 @@ from tackbench.shootout.folder import (
     move_into_place,
 )
 from tackbench.shootout.matching import Matching, Sound, match
-from tackbench.shootout.plan import Plan, make_plan
+from tackbench.shootout.plan import Plan, make_plan, words_of
 from tackbench.shootout.remarks import remarks
 from tackbench.shootout.survey import Survey, survey
 from tackbench.shootout.threads import Report, Tally, in_threads
 from tackbench.shootout.volts import Volts, render_volts
 from tackbench.shootout.writing import Written, write_bypass, write_volts
-from tackbench.stage import Stage, Variant, load_stage
+from tackbench.stage import Stage, load_stage
 
 VERSION = 1
 """The version of the schema of ``shootout.json``."""
@@ -95,9 +95,8 @@ class Job:
 
     @cached_property
     def words(self) -> list[str]:
-        """Each variant in words: the reference in full, the others by what they change."""
-        reference, *others = self.plan.variants
-        return [_reference_words(reference, others), *(variant.words(reference) for variant in others)]
+        """Each variant in words."""
+        return words_of(self.plan)
 
     @cached_property
     def names(self) -> list[str]:
@@ -278,15 +277,6 @@ def check_quality(quality: str) -> None:
     """``InputError`` for an unknown quality."""
     if quality not in QUALITIES:
         raise InputError(f"there is no quality {quality!r}", expected=nearest(quality, QUALITIES))
-
-
-def _reference_words(reference: Variant, others: Sequence[Variant]) -> str:
-    """The reference in words: what was chosen, or else what it has where the others differ."""
-    chosen = reference.words()
-    if chosen != reference.stage.variant().words():
-        return chosen
-    against = max((reference.words(other) for other in others), key=len, default="")
-    return f"{chosen}: {against}" if against else chosen
 
 
 def _write_text(path: Path, text: str) -> None:

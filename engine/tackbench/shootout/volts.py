@@ -15,6 +15,7 @@ from tackbench.audio.levels import LevelMeter, Levels
 from tackbench.audio.loudness import LoudnessMeter
 from tackbench.audio.scratch import ScratchAudio
 from tackbench.errors import InputError, WorkError
+from tackbench.network import response
 from tackbench.render import PreparedStage, prepare
 from tackbench.stage import Variant
 
@@ -22,16 +23,25 @@ BLOCK_FRAMES = 2048
 """Frames of the take that are worked on at a time: few enough that Ctrl-C and the progress bar are prompt."""
 
 
+MID_FREQUENCIES = np.geomspace(200.0, 4000.0, 40)
+"""Hertz at which the polarity is asked: where a guitar has its weight, away from the coupling capacitors' turn."""
+
+UNCLEAR_BELOW = 0.1
+"""An in-phase share of the response nearer to zero than this tells no polarity."""
+
+
 @dataclass(frozen=True)
 class Volts:
     """What the first pass found. ``rest`` is the output's DC with the take silent, in volts; ``levels`` are in volts;
-    ``loudness`` measures the moving part on the take's own scale; ``counts`` are the solver's."""
+    ``loudness`` measures the moving part on the take's own scale; ``counts`` are the solver's;
+    ``polarity`` is "+", "inv" or "?"."""
 
     rest: float
     levels: Levels
     loudness: LoudnessMeter
     counts: Mapping[str, int]
     warnings: tuple[str, ...]
+    polarity: str
     seconds: float
 
 
@@ -48,6 +58,7 @@ def render_volts(
         prepared = prepare(variant.circuit, take.rate, quality)
         keeper = _Keeper(take, prepared, scratch)
         counts = _through(take, prepared, keeper, advance)
+        polarity = polarity_of(response(variant.circuit, MID_FREQUENCIES))
     except (InputError, WorkError) as trouble:
         raise type(trouble)(f"{words}: {trouble}") from trouble
     return Volts(
@@ -56,6 +67,7 @@ def render_volts(
         loudness=keeper.loudness,
         counts=counts,
         warnings=tuple(prepared.warnings),
+        polarity=polarity,
         seconds=time.thread_time() - began,
     )
 
@@ -84,3 +96,12 @@ def _through(
         advance(len(block))
     keeper.keep(stream.finish())
     return asdict(stream.counts)
+
+
+def polarity_of(gains: NDArray[np.complex128]) -> str:
+    """The same way up as the take (+), upside down (inv) or neither clearly (?), by small-signal gains."""
+    whole = float(np.sum(np.abs(gains)))
+    share = float(np.sum(gains.real)) / whole if whole > 0 else 0.0
+    if abs(share) < UNCLEAR_BELOW:
+        return "?"
+    return "+" if share > 0 else "inv"

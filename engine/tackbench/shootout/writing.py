@@ -15,8 +15,6 @@ from tackbench.audio.files import write_audio
 from tackbench.audio.scratch import ScratchAudio
 
 BLOCK_FRAMES = 8192
-UNCLEAR_BELOW = 0.1
-"""A correlation with the take nearer to zero than this tells no polarity."""
 
 
 @dataclass(frozen=True)
@@ -25,13 +23,6 @@ class Written:
 
     name: str
     correlation: float | None
-
-    @property
-    def polarity(self) -> str:
-        """The same way up as the take (+), upside down (inv), or neither clearly (?)."""
-        if self.correlation is None or abs(self.correlation) < UNCLEAR_BELOW:
-            return "?"
-        return "+" if self.correlation > 0 else "inv"
 
 
 class _Together:
