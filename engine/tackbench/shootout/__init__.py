@@ -1,4 +1,12 @@
-"""The main job: several variants of a stage rendered from one take, matched, measured and written."""
+"""The main job: several variants of a stage rendered from one take, matched, measured and written.
+
+The room and its main function share a name: ``tackbench.shootout`` is the function until this package is imported,
+and from then on the package, as the import system has it. So the package can be called as well.
+"""
+
+import sys
+from types import ModuleType
+from typing import Any
 
 from tackbench.shootout.plan import read_choices
 from tackbench.shootout.run import Job, Shootout, prepare_shootout, shootout
@@ -15,3 +23,13 @@ __all__ = [
     "read_choices",
     "shootout",
 ]
+
+
+class _Room(ModuleType):
+    """This package, callable as its main function."""
+
+    def __call__(self, *arguments: Any, **named: Any) -> Shootout:
+        return shootout(*arguments, **named)
+
+
+sys.modules[__name__].__class__ = _Room

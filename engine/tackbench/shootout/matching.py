@@ -14,6 +14,9 @@ CEILING_DB = -1.0
 SILENT_BELOW_DB = -120.0
 """An output this far under the take is rounding error, not sound; it is not brought up to the take's loudness."""
 
+HALF_A_CODE = 2.0**-25
+"""Full scale: a file whose true peak stays under half a code of 24 bits would hold nothing but dither."""
+
 _ROUNDS = 12
 _CLOSE_DB = 1e-4
 
@@ -86,7 +89,7 @@ def _ceiling() -> float:
 def _is_silent(sound: Sound, take: Sound) -> bool:
     """Nothing to bring up: no loudness, or so little that only rounding error would become loud."""
     own, other = sound.loudness(1.0).lufs, take.loudness(1.0).lufs
-    if own is None or sound.true_peak == 0:
+    if own is None or sound.true_peak < HALF_A_CODE:
         return True
     return other is not None and own < other + SILENT_BELOW_DB
 
@@ -111,3 +114,8 @@ def _gain_to(sound: Sound, target: float) -> float:
         if abs(target - reached) < _CLOSE_DB:
             break
     return gain
+
+
+def written_factor(gain: float, true_peak: float, subtype: str) -> float:
+    """The gain to write a file with: zero, for digital silence, where rounding to 24 bits would leave only dither."""
+    return 0.0 if subtype != "FLOAT" and true_peak * gain < HALF_A_CODE else gain

@@ -31,7 +31,7 @@ from tackbench.shootout.folder import (
     default_folder,
     move_into_place,
 )
-from tackbench.shootout.matching import Matching, Sound, match
+from tackbench.shootout.matching import Matching, Sound, match, written_factor
 from tackbench.shootout.plan import Plan, make_plan, words_of
 from tackbench.shootout.remarks import remarks
 from tackbench.shootout.survey import Survey, survey
@@ -168,7 +168,7 @@ class Job:
             if item < 0:
                 return write_bypass(building / self.names[0], take, matching.bypass_gain, SUBTYPE, tally.advance)
             path = building / self.names[1 + self.live[item]]
-            factor = matching.gains[item] / scale
+            factor = written_factor(matching.gains[item], volts[item].levels.true_peak / scale, SUBTYPE) / scale
             return write_volts(path, take, stores[item], volts[item].rest, factor, SUBTYPE, tally.advance)
 
         return in_threads(work, range(-1, len(volts)), self.threads, tally, report)

@@ -19,7 +19,7 @@ from tackbench.audio.scratch import BYTES_PER_SAMPLE, ScratchAudio
 from tackbench.errors import InputError, nearest
 from tackbench.render import NUMERICS
 from tackbench.shootout.entries import about_variant, take_entry, variant_entry
-from tackbench.shootout.matching import CEILING_DB, SILENT_BELOW_DB, Sound, match
+from tackbench.shootout.matching import CEILING_DB, HALF_A_CODE, SILENT_BELOW_DB, Sound, match, written_factor
 from tackbench.shootout.remarks import solver_words
 from tackbench.shootout.run import check_quality
 from tackbench.shootout.survey import Survey, survey
@@ -107,14 +107,16 @@ class FileJob:
         if self.level == "matched":
             matching = match(self.looked.sound, [sound], with_bypass=False)
             return matching.gains[0], matching.silent[0]
-        if sound.true_peak <= self.looked.levels.true_peak * 10 ** (SILENT_BELOW_DB / 20):
+        least = max(HALF_A_CODE, self.looked.levels.true_peak * 10 ** (SILENT_BELOW_DB / 20))
+        if sound.true_peak < least:
             return 1.0, True
         return float(10 ** (CEILING_DB / 20)) / sound.true_peak, False
 
     def _write(self, store: ScratchAudio, volts: Volts, gain: float, report: Report) -> Written:
         tally = Tally(self.take.frames)
         rest = 0.0 if self.level == "as-built" else volts.rest
-        factor = gain / self.take.volts_per_full_scale
+        scale = self.take.volts_per_full_scale
+        factor = written_factor(gain, volts.levels.true_peak / scale, self.subtype) / scale
 
         def work(path: Path) -> Written:
             return write_volts(
