@@ -103,8 +103,9 @@ def _source_loops(circuit: Circuit) -> Iterator[Fault]:
         else:
             words = "it stands in parallel with other sources, and none of them has a resistance"
             yield Fault(name, None, words, "put a resistance in series with one of them")
-    for node, _ in circuit.supply.rails if circuit.supply is not None and circuit.supply.ohms > 0.0 else ():
-        if shorts_only.same(node, circuit.supply.node):
+    supply = circuit.supply
+    for node, _ in supply.rails if supply is not None and supply.ohms > 0.0 else ():
+        if supply is not None and shorts_only.same(node, supply.node):
             words = "it is joined with the supply node that it is made from"
             yield Fault(f"supply rail {node}", None, words, "leave a part between the two")
 
