@@ -40,12 +40,12 @@ def user_cache_folder() -> Path:
 
 
 def _source_hash() -> str:
-    """A hash over every source file of the package, so that no compiled code outlives the text it came from."""
+    """A hash over every source file that compiled code is made from, so that it does not outlive its text."""
     digest = hashlib.sha256()
     root = Path(__file__).parent
     for path in sorted(root.rglob("*.py")):
         text = path.read_bytes()
-        if b"njit_cached" in text:
+        if b"njit_cached" in text or path.parent.name == "devices":  # the laws' text is derived, then compiled
             digest.update(path.relative_to(root).as_posix().encode())
             digest.update(text)
     return digest.hexdigest()[:16]
@@ -83,18 +83,60 @@ def seconds_spent_compiling() -> float:
 
 
 def njit_cached(
-    signature: str, inner: tuple[Callable[..., Any], ...] = (), **options: Any
+    signature: str,
+    inner: tuple[Callable[..., Any], ...] = (),
+    called: tuple[Callable[..., Any], ...] = (),
+    **options: Any,
 ) -> Callable[[Callable[..., Any]], Any]:
     """Decorate a function to be compiled on its first call with exactly this signature, cached, without the GIL.
 
-    ``inner`` lists plain functions that it calls, innermost first; they are compiled into it. No fast-math: the same
-    samples come out whatever the block size or thread.
+    ``inner`` and ``called`` list the plain functions that it uses: the former are compiled into their callers,
+    which spares passing many arrays at each call; the latter stay functions, for what is large or seldom used. No
+    fast-math: the same samples come out whatever the block size or thread.
     """
 
     def decorate(function: Callable[..., Any]) -> Any:
-        return _LateFunction(function, signature, inner, options)
+        return _LateFunction(function, signature, inner, called, options)
 
     return decorate
+
+
+def borrowed(arrays: tuple[Any, ...]) -> tuple[Any, ...]:
+    """The same arrays, seen by compiled code without counting who holds them; as they are in plain Python.
+
+    numba counts the holders of every array at every call of an inner function, by locked instructions that cost more
+    than the sums inside. Borrowed arrays are not counted; the caller of the compiled function keeps them alive.
+    """
+    return arrays
+
+
+@cache
+def _teach_numba_to_borrow() -> None:
+    from llvmlite import ir
+    from numba.core.imputils import impl_ret_borrowed
+    from numba.extending import intrinsic, overload
+    from numba.np.arrayobj import make_array
+
+    @intrinsic
+    def uncounted(_context: Any, arrays: Any) -> Any:
+        def code(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:
+            views = []
+            for place, kind in enumerate(arrays.types):
+                view = make_array(kind)(context, builder, value=builder.extract_value(arguments[0], place))
+                view.meminfo = ir.Constant(view.meminfo.type, None)
+                view.parent = ir.Constant(view.parent.type, None)
+                views.append(view._getvalue())
+            tuple_of_views = context.make_tuple(builder, signature.return_type, views)
+            return impl_ret_borrowed(context, builder, signature.return_type, tuple_of_views)
+
+        return arrays(arrays), code
+
+    @overload(borrowed)
+    def _(arrays: Any) -> Any:
+        def views(arrays: Any) -> Any:
+            return uncounted(arrays)  # type: ignore[call-arg]
+
+        return views
 
 
 class _LateFunction:
@@ -105,9 +147,16 @@ class _LateFunction:
         function: Callable[..., Any],
         signature: str,
         inner: tuple[Callable[..., Any], ...],
+        called: tuple[Callable[..., Any], ...],
         options: dict[str, Any],
     ) -> None:
-        self.plain, self._signature, self._inner, self._options = function, signature, inner, options
+        self.plain, self._signature, self._inner, self._called, self._options = (
+            function,
+            signature,
+            inner,
+            called,
+            options,
+        )
         self._compiled: Callable[..., Any] | None = None
         self.__doc__, self.__name__ = function.__doc__, function.__name__
 
@@ -124,11 +173,13 @@ class _LateFunction:
         import numba
         from numba.extending import register_jitable
 
-        for function in self._inner:
+        _teach_numba_to_borrow()
+        for function in (*self._inner, *self._called):
             if function not in _REGISTERED:
-                register_jitable(function)
+                register_jitable(forceinline=function not in self._called)(function)
                 _REGISTERED.add(function)
-        make = numba.njit(self._signature, cache=True, nogil=True, **self._options)
+        options: dict[str, Any] = {"cache": True, "nogil": True, "no_cfunc_wrapper": True, **self._options}
+        make = numba.njit(self._signature, **options)
         try:
             compiled: Callable[..., Any] = make(self.plain)
         except (EOFError, TypeError, ValueError, AttributeError, ImportError, OSError) as trouble:

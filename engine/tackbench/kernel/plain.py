@@ -10,8 +10,11 @@ from __future__ import annotations
 
 import numpy as np
 
-from tackbench.compiled import njit_cached
+from tackbench.compiled import borrowed, njit_cached
 from tackbench.devices.table import MOST_CONTROLS, evaluate_devices
+
+ROWS = 4
+"""Matrices that multiply are kept in blocks of so many rows."""
 
 DENSE = 8
 """Output points per base interval."""
@@ -43,7 +46,7 @@ def _slope(power, t):
 
 
 def _factor(a, order):
-    """LU with row pivoting, in place; False when singular."""
+    """LU with row pivoting, in place, the pivots by their inverses; False when singular."""
     n = a.shape[0]
     for k in range(n):
         pivot, largest = k, abs(a[k, k])
@@ -56,9 +59,9 @@ def _factor(a, order):
         if pivot != k:
             for j in range(n):
                 a[k, j], a[pivot, j] = a[pivot, j], a[k, j]
-        inverse = 1.0 / a[k, k]
+        a[k, k] = 1.0 / a[k, k]
         for i in range(k + 1, n):
-            factor = a[i, k] * inverse
+            factor = a[i, k] * a[k, k]
             a[i, k] = factor
             if factor != 0.0:
                 for j in range(k + 1, n):
@@ -77,19 +80,19 @@ def _substitute(a, order, b):
     for k in range(n - 1, -1, -1):
         for j in range(k + 1, n):
             b[k] -= a[k, j] * b[j]
-        b[k] /= a[k, k]
+        b[k] *= a[k, k]
 
 
-def _jacobian(Y, N, g, first_control, first_current, control_of, current_of, jacobian):
+def _jacobian(Y, N, level, g, first_control, first_current, control_of, current_of, jacobian):
     """Y + N · dj/dc."""
-    K = Y.shape[0]
+    K = Y.shape[1]
     for row in range(K):
         for column in range(K):
-            jacobian[row, column] = Y[row, column]
+            jacobian[row, column] = Y[level, row, column]
         for device in range(first_control.size):
             k, m = first_control[device], first_current[device]
             for current in range(current_of[device]):
-                weight = N[row, m + current]
+                weight = N[level, row, m + current]
                 if weight != 0.0:
                     for control in range(control_of[device]):
                         jacobian[row, k + control] += weight * g[m + current, control]
@@ -108,7 +111,7 @@ def _leap(c, step, scale, high, low):
 
 
 def _newton(
-    Y, N, r, c, j, g, most, laws, first_control, first_current, first_parameter, p, control_of, current_of,
+    Y, N, level, r, c, j, g, most, laws, first_control, first_current, first_parameter, p, control_of, current_of,
     scales, high, low, jacobian, order, step,
 ):  # fmt: skip
     """Solve Y c + N j(c) = r from ``c``; on success c, and j carried along its tangent over the last step.
@@ -121,11 +124,11 @@ def _newton(
         for row in range(K):
             rest = r[row]
             for column in range(K):
-                rest -= Y[row, column] * c[column]
+                rest -= Y[level, row, column] * c[column]
             for column in range(j.size):
-                rest -= N[row, column] * j[column]
+                rest -= N[level, row, column] * j[column]
             step[row] = rest
-        _jacobian(Y, N, g, first_control, first_current, control_of, current_of, jacobian)
+        _jacobian(Y, N, level, g, first_control, first_current, control_of, current_of, jacobian)
         if not _factor(jacobian, order):
             return -iteration
         _substitute(jacobian, order, step)
@@ -151,7 +154,7 @@ def _newton(
 
 
 def _homotopy(
-    Y, N, r, c, j, g, laws, first_control, first_current, first_parameter, p, control_of, current_of,
+    Y, N, level, r, c, j, g, laws, first_control, first_current, first_parameter, p, control_of, current_of,
     scales, high, low, jacobian, order, step,
 ):  # fmt: skip
     """Lead the drive from one that ``c`` solves to ``r``, halving where it is hard, doubling where it is easy."""
@@ -161,16 +164,16 @@ def _homotopy(
     for row in range(K):
         start[row] = 0.0
         for column in range(K):
-            start[row] += Y[row, column] * c[column]
+            start[row] += Y[level, row, column] * c[column]
         for column in range(j.size):
-            start[row] += N[row, column] * j[column]
+            start[row] += N[level, row, column] * j[column]
     done, stride, total = 0.0, 0.25, 0
     for _ in range(_HOMOTOPY_TRIALS):
         ahead = min(1.0, done + stride)
         for row in range(K):
             goal[row] = start[row] + ahead * (r[row] - start[row])
         used = _newton(
-            Y, N, goal, c, j, g, _PLAIN_ITERATIONS, laws, first_control, first_current, first_parameter, p,
+            Y, N, level, goal, c, j, g, _PLAIN_ITERATIONS, laws, first_control, first_current, first_parameter, p,
             control_of, current_of, scales, high, low, jacobian, order, step,
         )  # fmt: skip
         total += abs(used)
@@ -188,74 +191,91 @@ def _homotopy(
     return -total
 
 
-def _slopes(
-    X, s, g, u, u_slope, A, B, E, R0, S0, first_control, first_current, control_of, current_of,
-    X_slope, s_slope, rest_factors, rest_order, right,
-):  # fmt: skip
-    """dX/dt from the state equations, dc/dt by differentiating the root's equations, dj/dt = (dj/dc) dc/dt.
+def _add(blocks, level, vector, first, out, at):
+    """out[at:] += the matrix times vector[first:].
 
-    ``rest_factors`` are those of the root's equations for a step of no length.
+    The matrix is kept in blocks of four rows, the last filled up with zeros, and each block by columns: four sums run
+    side by side in registers. ``out`` must have room for the zeros that the last block adds.
     """
-    n, K = X.size, right.size
-    for row in range(n):
-        total = E[row, 0] * u + E[row, 1]
-        for column in range(n):
-            total += A[row, column] * X[column]
-        for column in range(s.size):
-            total += B[row, column] * s[column]
-        X_slope[row] = total
-    for row in range(K):
-        total = S0[row] * u_slope
-        for column in range(n):
-            total += R0[row, column] * X_slope[column]
-        right[row] = total
-    _substitute(rest_factors, rest_order, right)
-    _with_currents(right, g, first_control, first_current, control_of, current_of, s_slope)
+    for block in range(blocks.shape[1]):
+        row = at + ROWS * block
+        sum0, sum1, sum2, sum3 = out[row], out[row + 1], out[row + 2], out[row + 3]
+        for k in range(blocks.shape[2]):
+            weight = vector[first + k]
+            sum0 += blocks[level, block, k, 0] * weight
+            sum1 += blocks[level, block, k, 1] * weight
+            sum2 += blocks[level, block, k, 2] * weight
+            sum3 += blocks[level, block, k, 3] * weight
+        out[row], out[row + 1], out[row + 2], out[row + 3] = sum0, sum1, sum2, sum3
 
 
-def _with_currents(c, g, first_control, first_current, control_of, current_of, s):
-    """s = (c, (dj/dc) c): small changes of the controls and the changes of the currents that follow."""
-    K = c.size
+def _with_currents(c, K, g, first_control, first_current, control_of, current_of, s, at):
+    """s[at:] = (c, (dj/dc) c): small changes of the controls and the changes of the currents that follow."""
     for k in range(K):
-        s[k] = c[k]
+        s[at + k] = c[k]
     for device in range(first_control.size):
         k, m = first_control[device], first_current[device]
         for current in range(current_of[device]):
             total = 0.0
             for control in range(control_of[device]):
                 total += g[m + current, control] * c[k + control]
-            s[K + m + current] = total
+            s[at + K + m + current] = total
 
 
-def _close(error, R, Q, g, first_control, first_current, control_of, current_of, factors, order, e_c, e_s):
+def _slopes(
+    ends, u_slope, ABE, R0, S0, g, first_control, first_current, control_of, current_of, factors, order, n, e_c,
+    slope,
+):  # fmt: skip
+    """Slopes of (X, c, j) where they are ``ends`` = (X, c, j, u, 1): dX/dt from the state equations, dc/dt by
+    differentiating the root's equations (``factors``: for a step of no length), dj/dt = (dj/dc) dc/dt."""
+    for row in range(n):
+        slope[row] = 0.0
+    _add(ABE, 0, ends, 0, slope, 0)
+    for k in range(order.size):
+        e_c[k] = S0[k] * u_slope
+    _add(R0, 0, slope, 0, e_c, 0)
+    _substitute(factors, order, e_c)
+    _with_currents(e_c, order.size, g, first_control, first_current, control_of, current_of, slope, n)
+
+
+def _close(error, R, Q, level, g, first_control, first_current, control_of, current_of, factors, order, e_c, e_s):
     """Turn an error of the open step into the one that the root lets through: error += Q e_s, in place.
 
     ``factors`` are those of the root's Jacobian; ``e_s`` becomes the change of (c, j).
     """
-    for row in range(e_c.size):
-        total = 0.0
-        for column in range(error.size):
-            total += R[row, column] * error[column]
-        e_c[row] = total
+    for k in range(order.size):
+        e_c[k] = 0.0
+    _add(R, level, error, 0, e_c, 0)
     _substitute(factors, order, e_c)
-    _with_currents(e_c, g, first_control, first_current, control_of, current_of, e_s)
-    for row in range(error.size):
-        for column in range(e_s.size):
-            error[row] += Q[row, column] * e_s[column]
+    _with_currents(e_c, order.size, g, first_control, first_current, control_of, current_of, e_s, 0)
+    _add(Q, level, e_s, 0, error, 0)
 
 
-_ARRAYS = "float64[::1], float64[::1], float64[::1], float64[::1], float64[::1], float64[::1], int64[::1]"
-_SETS = "float64[:, :, ::1], " * 7 + "float64[:, ::1], float64[:, :, ::1]"
-_REST = "float64[:, ::1], " * 6 + "float64[::1], float64[::1], float64[::1], float64[::1]"
+_STREAM = "float64[::1], float64[::1], float64[::1], float64[::1], float64[::1], int64[::1]"
+_MATRIX, _BLOCKS = "float64[:, :, ::1]", "float64[:, :, :, ::1]"
+_SETS = f"{_BLOCKS}, {_MATRIX}, {_MATRIX}, " + ", ".join([_BLOCKS] * 4)
+_REST = f"{_BLOCKS}, {_MATRIX}, {_MATRIX}, {_BLOCKS}, float64[::1], float64[::1], float64[::1]"
 _BANK = "int64[::1], int64[::1], int64[::1], int64[::1], float64[::1], int64[::1], int64[::1]"
 _LIMITS = "float64[::1], float64[::1], float64[::1]"
 _CHOICES = "float64, int64, int64, float64, float64[::1], int64[::1], float64[::1]"
+_WORK = "float64[::1], " * 14 + "float64[:, ::1], " * 3 + "int64[::1], int64[::1]"
+
+
+def workspace(n: int, K: int, m: int) -> tuple[np.ndarray, ...]:
+    """The arrays that ``advance`` works in, for n states, K controls and m currents, in its order."""
+    spare = ROWS - 1  # for what _add writes
+    lengths = (
+        *(n + K + m + 5, K + n + spare, n + K + m + 2 + spare, n + K + m + spare, n + K + m + 1),
+        *(n + spare, n + spare, K + spare, K + m, K, K, m, K, 6),
+    )
+    vectors = tuple(np.zeros(length) for length in lengths)
+    matrices = (np.zeros((m, MOST_CONTROLS)), np.zeros((K, K)), np.zeros((K, K)))
+    return (*vectors, *matrices, np.zeros(K, np.int64), np.zeros(K, np.int64))
 
 
 @njit_cached(
-    f"int64({_ARRAYS}, {_SETS}, {_REST}, {_BANK}, {_LIMITS}, {_CHOICES})",
+    f"int64({_STREAM}, {_SETS}, {_REST}, {_BANK}, {_LIMITS}, {_CHOICES}, {_WORK})",
     inner=(
-        _evaluate,
         _value,
         _slope,
         _factor,
@@ -263,42 +283,64 @@ _CHOICES = "float64, int64, int64, float64, float64[::1], int64[::1], float64[::
         _jacobian,
         _leap,
         _newton,
-        _homotopy,
+        _add,
         _with_currents,
         _slopes,
         _close,
     ),
+    called=(_evaluate, _homotopy),
+    error_model="numpy",
 )
 def advance(
-    u, out, X, s, X_slope, s_slope, level_and_place,
-    H, Y, N, Q, R, error_X, error_s, error_u, smoothing,
-    A, B, E, Y0, N0, R0, S0, out_X, out_s, out_U,
+    u, out, z, z_slope, bend, kept_level,
+    H, Y, N, Q, R, error_map, smoothing,
+    ABE, Y0, N0, R0, S0, out_z, out_U,
     laws, first_control, first_current, first_parameter, p, control_of, current_of,
     scales, high, low,
     base_step, coarsest, finest, tolerance, weights, counts, fault,
+    history, target, z1, z1_slope, change, error, correction, e_c, e_s, r, c1, j1, step, power,
+    g, jacobian, rest_factors,
+    order, rest_order,
 ):  # fmt: skip
-    """Cross ``u.size - 5`` base intervals and write eight output points for each; returns 0, or 1 with ``fault`` set.
+    """Cross ``u.size - 5`` base intervals, writing eight output points for each; returns 0, or 1 with ``fault`` set.
 
-    ``fault`` is then (base interval, place within it, control that did not settle). ``weights`` turn states into volts
-    for ``tolerance`` (volts); an infinite tolerance keeps to the level ``coarsest`` and to the bare rule. Otherwise
-    the estimated local error is taken off, smoothed twice by the step's own Jacobian: that makes the rule third order
-    and damps what the trapezoid would let ring (its growth at infinite stiffness falls from -1 to -1/3).
+    ``z`` = (X, c, j), its slopes and the controls' ``bend`` (half their second derivatives) are the circuit's
+    condition, kept from call to call. Matrices that multiply are kept in blocks of rows. ``fault`` is (base interval,
+    place within it, control that did not settle). ``weights`` turn states into volts for ``tolerance`` (volts); an
+    infinite tolerance keeps to the level ``coarsest`` and to the bare rule. Otherwise the estimated local error is
+    taken off, smoothed twice by the step's own Jacobian: that makes the rule third order and damps what the trapezoid
+    would let ring (its growth at infinite stiffness falls from -1 to -1/3).
     """
-    n, K, m = X.size, scales.size, s.size - scales.size
-    width = n + K + m + 5
-    history, target, X1, X1_slope = np.empty(width), np.empty(K + n), np.empty(n), np.empty(n)
-    s1, s1_slope, e_s = np.empty(K + m), np.zeros(K + m), np.empty(K + m)
-    error, correction = np.empty(n), np.empty(n)
-    g = np.zeros((m, MOST_CONTROLS))
-    jacobian, order, step = np.empty((K, K)), np.empty(K, np.int64), np.empty(K)
-    rest_factors, rest_order = np.empty((K, K)), np.empty(K, np.int64)
-    r, e_c, trial_c, trial_j = np.empty(K), np.empty(K), np.empty(K), np.empty(m)
-    power = np.empty(6)
+    (
+        u, out, z, z_slope, bend, kept_level,
+        H, Y, N, Q, R, error_map, smoothing,
+        ABE, Y0, N0, R0, S0, out_z, out_U,
+        laws, first_control, first_current, first_parameter, p, control_of, current_of,
+        scales, high, low,
+        weights, counts, fault,
+        history, target, z1, z1_slope, change, error, correction, e_c, e_s, r, c1, j1, step, power,
+        g, jacobian, rest_factors,
+        order, rest_order,
+    ) = borrowed(
+        (
+            u, out, z, z_slope, bend, kept_level,
+            H, Y, N, Q, R, error_map, smoothing,
+            ABE, Y0, N0, R0, S0, out_z, out_U,
+            laws, first_control, first_current, first_parameter, p, control_of, current_of,
+            scales, high, low,
+            weights, counts, fault,
+            history, target, z1, z1_slope, change, error, correction, e_c, e_s, r, c1, j1, step, power,
+            g, jacobian, rest_factors,
+            order, rest_order,
+        )
+    )  # fmt: skip
+    K, m = scales.size, z.size - weights.size - scales.size
+    n = weights.size
     per_base, controlled = 1.0 / base_step, tolerance < np.inf
     last = H.shape[0] - 1
     whole = 1 << last
     dense_stride = whole // DENSE
-    level = level_and_place[0]
+    level = kept_level[0]
 
     for interval in range(u.size - LOOKAROUND):
         for k in range(6):
@@ -311,31 +353,26 @@ def advance(
             h = base_step * span / whole
             t0, t1 = place / whole, (place + span) / whole
             u0, u1 = _value(power, t0), _value(power, t1)
-            du0 = _slope(power, t0)
-            du1 = _slope(power, t1)
+            du0, du1 = _slope(power, t0), _slope(power, t1)
 
             # the incident waves: everything that is known at the start of the step
-            for k in range(n):
-                history[k] = X[k]
-            for k in range(K + m):
-                history[n + k] = s[k]
+            for k in range(n + K + m):
+                history[k] = z[k]
             history[n + K + m] = u0
             history[n + K + m + 1] = u1
             history[n + K + m + 2] = du0 * (t1 - t0)
             history[n + K + m + 3] = du1 * (t1 - t0)
             history[n + K + m + 4] = 1.0
             for row in range(K + n):
-                total = 0.0
-                for column in range(width):
-                    total += H[level, row, column] * history[column]
-                target[row] = total
+                target[row] = 0.0
+            _add(H, level, history, 0, target, 0)
 
-            # the root, from the controls carried on along their slopes
+            # the root, from the controls carried on along their slopes and how those changed over the last step
             for k in range(K):
                 r[k] = target[k]
-                trial_c[k] = s[k] + h * s_slope[k]
+                c1[k] = z[n + k] + h * (z_slope[n + k] + h * bend[k])
             used = _newton(
-                Y[level], N[level], r, trial_c, trial_j, g, _PLAIN_ITERATIONS, laws, first_control, first_current,
+                Y, N, level, r, c1, j1, g, _PLAIN_ITERATIONS, laws, first_control, first_current,
                 first_parameter, p, control_of, current_of, scales, high, low, jacobian, order, step,
             )  # fmt: skip
             counts[ITERATIONS] += abs(used)
@@ -346,10 +383,10 @@ def advance(
                     continue
                 counts[HARD] += 1
                 for k in range(K):
-                    trial_c[k] = s[k]
+                    c1[k] = z[n + k]
                 used = _homotopy(
-                    Y[level], N[level], r, trial_c, trial_j, g, laws, first_control, first_current,
-                    first_parameter, p, control_of, current_of, scales, high, low, jacobian, order, step,
+                    Y, N, level, r, c1, j1, g, laws, first_control, first_current, first_parameter, p,
+                    control_of, current_of, scales, high, low, jacobian, order, step,
                 )  # fmt: skip
                 counts[ITERATIONS] += abs(used)
                 if used < 0:
@@ -363,52 +400,52 @@ def advance(
                             worst, which = abs(step[k]) / scales[k], k
                     fault[0], fault[1], fault[2] = interval, t0, which
                     return 1
+            for k in range(n):
+                z1[k] = target[K + k]
             for k in range(K):
-                s1[k] = trial_c[k]
+                z1[n + k] = c1[k]
             for k in range(m):
-                s1[K + k] = trial_j[k]
-            for row in range(n):
-                total = target[K + row]
-                for column in range(K + m):
-                    total += Q[level, row, column] * s1[column]
-                X1[row] = total
+                z1[n + K + k] = j1[k]
+            z1[n + K + m] = u1
+            z1[n + K + m + 1] = 1.0
+            _add(Q, level, z1, n, z1, 0)
 
             # slopes at the end of the step
-            _jacobian(Y0, N0, g, first_control, first_current, control_of, current_of, rest_factors)
-            if not _factor(rest_factors, rest_order):
+            _jacobian(Y0, N0, 0, g, first_control, first_current, control_of, current_of, rest_factors)
+            if not _factor(rest_factors, rest_order):  # a fold of the resting equations: no slope is known there
                 for row in range(K):
                     for column in range(K):
-                        rest_factors[row, column] = 1.0 if row == column else 0.0
+                        rest_factors[row, column] = 0.0
                     rest_order[row] = row
             _slopes(
-                X1, s1, g, u1, du1 * per_base, A, B, E, R0, S0, first_control, first_current, control_of,
-                current_of, X1_slope, s1_slope, rest_factors, rest_order, e_c,
+                z1, du1 * per_base, ABE, R0, S0, g, first_control, first_current, control_of, current_of,
+                rest_factors, rest_order, n, e_c, z1_slope,
             )  # fmt: skip
 
             # the local error, from how much the slopes change; then, smoothed once more, it is taken off
             ratio = 0.0
             if controlled:
+                for k in range(n + K + m):
+                    change[k] = z_slope[k] - z1_slope[k]
+                change[n + K + m] = (du0 - du1) * per_base
                 for row in range(n):
-                    total = error_u[level, row] * (du0 - du1) * per_base
-                    for column in range(n):
-                        total += error_X[level, row, column] * (X_slope[column] - X1_slope[column])
-                    for column in range(K + m):
-                        total += error_s[level, row, column] * (s_slope[column] - s1_slope[column])
-                    error[row] = total
+                    error[row] = 0.0
+                _add(error_map, level, change, 0, error, 0)
                 _close(
-                    error, R[level], Q[level], g, first_control, first_current, control_of, current_of,
+                    error, R, Q, level, g, first_control, first_current, control_of, current_of,
                     jacobian, order, e_c, e_s,
                 )  # fmt: skip
                 y_error = 0.0
                 for row in range(n):
-                    y_error += out_X[row] * error[row]
-                    size = abs(error[row]) * weights[row] / tolerance
+                    y_error += out_z[row] * error[row]
+                    size = abs(error[row]) * weights[row]
                     if not size <= ratio:
                         ratio = size
                 for row in range(K + m):
-                    y_error += out_s[row] * e_s[row]
-                if not abs(y_error) / tolerance <= ratio:
-                    ratio = abs(y_error) / tolerance
+                    y_error += out_z[n + row] * e_s[row]
+                if not abs(y_error) <= ratio:
+                    ratio = abs(y_error)
+                ratio /= tolerance
                 if not ratio <= 1.0:
                     if level < finest:
                         level += 1
@@ -416,53 +453,47 @@ def advance(
                         continue
                     counts[CAPPED] += 1
                 for row in range(n):
-                    total = 0.0
-                    for column in range(n):
-                        total += smoothing[level, row, column] * error[column]
-                    correction[row] = total
+                    correction[row] = 0.0
+                _add(smoothing, level, error, 0, correction, 0)
                 _close(
-                    correction, R[level], Q[level], g, first_control, first_current, control_of, current_of,
+                    correction, R, Q, level, g, first_control, first_current, control_of, current_of,
                     jacobian, order, e_c, e_s,
                 )  # fmt: skip
                 for row in range(n):
-                    X1[row] += correction[row]
+                    z1[row] += correction[row]
                 for row in range(K + m):
-                    s1[row] += e_s[row]
+                    z1[n + row] += e_s[row]
                 _slopes(
-                    X1, s1, g, u1, du1 * per_base, A, B, E, R0, S0, first_control, first_current, control_of,
-                    current_of, X1_slope, s1_slope, rest_factors, rest_order, e_c,
+                    z1, du1 * per_base, ABE, R0, S0, g, first_control, first_current, control_of, current_of,
+                    rest_factors, rest_order, n, e_c, z1_slope,
                 )  # fmt: skip
 
             # the output between the ends of the step: a cubic through values and slopes
-            while next_dense <= DENSE and next_dense * dense_stride <= place + span:
-                theta = (next_dense * dense_stride - place) / span
+            if next_dense * dense_stride <= place + span:
                 y0, y1 = out_U[0] * u0 + out_U[1], out_U[0] * u1 + out_U[1]
                 d0, d1 = out_U[0] * du0 * per_base, out_U[0] * du1 * per_base
-                for k in range(n):
-                    y0 += out_X[k] * X[k]
-                    y1 += out_X[k] * X1[k]
-                    d0 += out_X[k] * X_slope[k]
-                    d1 += out_X[k] * X1_slope[k]
-                for k in range(K + m):
-                    y0 += out_s[k] * s[k]
-                    y1 += out_s[k] * s1[k]
-                    d0 += out_s[k] * s_slope[k]
-                    d1 += out_s[k] * s1_slope[k]
-                rest = 1.0 - theta
-                out[interval * DENSE + next_dense - 1] = (
-                    y0 * (1.0 + 2.0 * theta) * rest * rest
-                    + y1 * theta * theta * (3.0 - 2.0 * theta)
-                    + h * theta * rest * (d0 * rest - d1 * theta)
-                )
-                next_dense += 1
+                for k in range(n + K + m):
+                    y0 += out_z[k] * z[k]
+                    y1 += out_z[k] * z1[k]
+                    d0 += out_z[k] * z_slope[k]
+                    d1 += out_z[k] * z1_slope[k]
+                while next_dense <= DENSE and next_dense * dense_stride <= place + span:
+                    theta = (next_dense * dense_stride - place) / span
+                    rest = 1.0 - theta
+                    out[interval * DENSE + next_dense - 1] = (
+                        y0 * (1.0 + 2.0 * theta) * rest * rest
+                        + y1 * theta * theta * (3.0 - 2.0 * theta)
+                        + h * theta * rest * (d0 * rest - d1 * theta)
+                    )
+                    next_dense += 1
 
-            for k in range(n):
-                X[k], X_slope[k] = X1[k], X1_slope[k]
-            for k in range(K + m):
-                s[k], s_slope[k] = s1[k], s1_slope[k]
+            for k in range(K):
+                bend[k] = 0.5 * (z1_slope[n + k] - z_slope[n + k]) / h
+            for k in range(n + K + m):
+                z[k], z_slope[k] = z1[k], z1_slope[k]
             place += span
             counts[STEPS] += 1
             if level > coarsest and ratio < 0.08 and place % (2 * span) == 0:
                 level -= 1
-    level_and_place[0] = level
+    kept_level[0] = level
     return 0

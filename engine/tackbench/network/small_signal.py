@@ -15,7 +15,7 @@ from tackbench.network.operating_point import OperatingPoint, as_circuit, settle
 
 @dataclass(frozen=True)
 class SmallSignal:
-    """dX/dt = A X + b u, all node voltages = C X + d u; u is the take's voltage, all are deviations from rest."""
+    """dX/dt = A X + b u, all node voltages = C X + d u; u is the take (V); all are deviations from rest."""
 
     A: np.ndarray
     b: np.ndarray
@@ -24,7 +24,7 @@ class SmallSignal:
     output: int
 
     def poles(self) -> np.ndarray:
-        """Natural frequencies in radians per second; one with a positive real part means that the stage oscillates."""
+        """Natural frequencies (radians per second); a positive real part means that the stage oscillates."""
         return np.asarray(np.linalg.eigvals(self.A))
 
     def transfer(self, frequencies: np.ndarray, node: int) -> np.ndarray:

@@ -13,7 +13,7 @@ from tackbench.audio.resample import base_factor
 from tackbench.circuit import Circuit
 from tackbench.devices.table import LAWS
 from tackbench.errors import InputError, nearest
-from tackbench.kernel.plain import EMERGENCY_LEVELS
+from tackbench.kernel.plain import EMERGENCY_LEVELS, ROWS
 from tackbench.network.model import NetworkModel, network_model
 from tackbench.network.operating_point import OperatingPoint, settle
 from tackbench.network.rules import CoefficientSets, coefficient_sets, root_form
@@ -63,7 +63,7 @@ class PreparedStage:
     output_dc: float
     warnings: tuple[str, ...]
     kernel_arrays: tuple[Any, ...]
-    start: tuple[np.ndarray, np.ndarray]
+    start: np.ndarray
 
     def stream(self, channels: int) -> StageStream:
         """A fresh stream: the circuit at rest, the take about to begin."""
@@ -92,8 +92,7 @@ def prepare_with(circuit: Circuit, rate: int, quality: Quality) -> PreparedStage
     levels = max(quality.finest, EMERGENCY_LEVELS) + 1
     sets = coefficient_sets(form, base_step, levels, quality.rule)
     output = _output_maps(model, circuit)
-    s = np.concatenate([rest.c, rest.j])
-    dc = float(output[0] @ rest.X + output[1] @ s + output[2][1])
+    z = np.concatenate([rest.X, rest.c, rest.j])
     return PreparedStage(
         circuit=circuit,
         rate=rate,
@@ -102,38 +101,50 @@ def prepare_with(circuit: Circuit, rate: int, quality: Quality) -> PreparedStage
         model=model,
         rest=rest,
         rule=sets.rule,
-        output_dc=dc,
+        output_dc=float(output[0] @ z + output[1][1]),
         warnings=rest.warnings,
         kernel_arrays=_kernel_arrays(model, sets, output, base_step, quality),
-        start=(rest.X, s),
+        start=z,
     )
 
 
-def _output_maps(model: NetworkModel, circuit: Circuit) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    """The output voltage in terms of the state, of (c, j), and of (take, 1)."""
+def _output_maps(model: NetworkModel, circuit: Circuit) -> tuple[np.ndarray, np.ndarray]:
+    """The output voltage in terms of (X, c, j) and of (take, 1)."""
     state, node = model.state, model.assembly.elements.node(circuit.output_node)
     if node < 0:
-        return np.zeros(state.states), np.zeros(state.controls + state.currents), np.zeros(2)
-    return state.nodes_X[node].copy(), state.nodes_s[node].copy(), state.nodes_U[node].copy()
+        return np.zeros(state.states + state.controls + state.currents), np.zeros(2)
+    return np.concatenate([state.nodes_X[node], state.nodes_s[node]]), state.nodes_U[node].copy()
+
+
+def _in_blocks(matrices: np.ndarray) -> np.ndarray:
+    """Matrices (…, rows, columns) as the kernel takes them: (…, blocks of rows, columns, rows in a block)."""
+    count, rows, columns = matrices.shape
+    blocks = -(-rows // ROWS)
+    filled = np.zeros((count, blocks * ROWS, columns))
+    filled[:, :rows] = matrices
+    return np.ascontiguousarray(filled.reshape(count, blocks, ROWS, columns).swapaxes(-1, -2))
 
 
 def _kernel_arrays(
     model: NetworkModel,
     sets: CoefficientSets,
-    output: tuple[np.ndarray, np.ndarray, np.ndarray],
+    output: tuple[np.ndarray, np.ndarray],
     base_step: float,
     quality: Quality,
 ) -> tuple[Any, ...]:
     """What ``kernel.plain.advance`` takes after the stream's own arrays, in its order."""
     state, bank = model.state, model.bank
     K = state.controls
-    exact = (state.A, state.B, state.E, state.F[:, :K], state.F[:, K:], state.R, state.S[:, 0])
+    error_map = np.concatenate([sets.error_X, sets.error_s, sets.error_u[:, :, None]], axis=2)
     current_of = np.array([len(LAWS[law].currents) for law in bank.laws], dtype=np.int64)
     return (
-        sets.H, sets.Y, sets.N, sets.Q, sets.R, sets.error_X, sets.error_s, sets.error_u, sets.smoothing,
-        *(np.ascontiguousarray(matrix) for matrix in exact),
+        *(_in_blocks(sets.H), sets.Y, sets.N, _in_blocks(sets.Q), _in_blocks(sets.R)),
+        *(_in_blocks(error_map), _in_blocks(sets.smoothing)),
+        _in_blocks(np.hstack([state.A, state.B, state.E])[None]),
+        *(np.ascontiguousarray(state.F[None, :, :K]), np.ascontiguousarray(state.F[None, :, K:])),
+        *(_in_blocks(state.R[None]), np.ascontiguousarray(state.S[:, 0])),
         *output,
-        bank.laws, bank.first_control, bank.first_current, bank.first_parameter, bank.parameters,
-        bank.control_of, current_of, bank.scales, bank.high_knees, bank.low_knees,
-        base_step, quality.coarsest, quality.finest, quality.tolerance, state.scales,
-    )  # fmt: skip
+        *(bank.laws, bank.first_control, bank.first_current, bank.first_parameter, bank.parameters),
+        *(bank.control_of, current_of, bank.scales, bank.high_knees, bank.low_knees),
+        *(base_step, quality.coarsest, quality.finest, quality.tolerance, state.scales),
+    )

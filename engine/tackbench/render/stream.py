@@ -72,9 +72,10 @@ class _ChannelLine:
         self._stage = stage
         self._up, self._down = Upsampler(stage.factor), Downsampler(stage.factor, plain.DENSE)
         self.delay = self._up.half + self._down.half
-        X, s = stage.start
-        self._state = (X.copy(), s.copy(), np.zeros_like(X), np.zeros_like(s))
+        self._state = (stage.start.copy(), np.zeros_like(stage.start), np.zeros(stage.model.state.controls))
         self._level = np.array([stage.quality.coarsest], dtype=np.int64)
+        state = stage.model.state
+        self._work = plain.workspace(state.states, state.controls, state.currents)
         self._input = np.zeros(2)  # what lies before the first sample: the take is zero there
         self._dense = np.zeros(1)  # the output at the stream's first instant, less its resting voltage
         self._skip = self.delay
@@ -103,7 +104,9 @@ class _ChannelLine:
 
     def _advance(self, u: np.ndarray, out: np.ndarray) -> None:
         stage, fault = self._stage, np.zeros(4)
-        failed = plain.advance(u, out, *self._state, self._level, *stage.kernel_arrays, self.counts, fault)
+        failed = plain.advance(
+            u, out, *self._state, self._level, *stage.kernel_arrays, self.counts, fault, *self._work
+        )
         if failed or not np.all(np.isfinite(out)):
             interval = self._intervals + fault[0] + fault[1]
             seconds = interval / (stage.rate * stage.factor) - self._up.half / stage.rate
