@@ -94,7 +94,8 @@ def phi_functions(A: np.ndarray, smallest_step: float, doublings: int) -> list[l
 
     phi_k(z) = sum z^i / (i + k)!. Doubling: phi_k(2z) = 2^-k (phi_0 phi_k + sum_j phi_j / (k - j)!), see Skaflestad
     and Wright, "The scaling and modified squaring method for matrix functions related to the exponential", 2009.
-    phi_0 is always formed as I + z phi_1, so that slow modes keep their relative accuracy beside stiff ones.
+    phi_0 is carried as D = phi_0 - I, D(2z) = 2 D + D D, so that slow modes keep their relative accuracy and the
+    rounding of stiff ones dies away instead of growing.
     """
     n = len(A)
     norm = float(np.max(np.sum(np.abs(A), axis=1), initial=0.0)) * smallest_step
@@ -109,21 +110,21 @@ def phi_functions(A: np.ndarray, smallest_step: float, doublings: int) -> list[l
     phi = [identity] * 4 + [highest]
     for k, inverse in ((3, 1.0 / 6.0), (2, 0.5), (1, 1.0)):
         phi[k] = inverse * identity + z @ phi[k + 1]
-    phi[0] = identity + z @ phi[1]
+    D = z @ phi[1]
+    phi[0] = identity + D
     results = []
     for doubling in range(halvings + doublings):
         if doubling >= halvings:
             results.append(phi)
         p0, p1, p2, p3, p4 = phi
-        z = 2.0 * z
+        D = 2.0 * D + D @ D
         phi = [
-            p0,
+            identity + D,
             (p0 @ p1 + p1) / 2.0,
             (p0 @ p2 + p1 + p2) / 4.0,
             (p0 @ p3 + p1 / 2.0 + p2 + p3) / 8.0,
             (p0 @ p4 + p1 / 6.0 + p2 / 2.0 + p3 + p4) / 16.0,
         ]
-        phi[0] = identity + z @ phi[1]
     return results
 
 
