@@ -2,15 +2,15 @@
 
 numba keys its cache by the text of one file only, trusts what it finds there, and fails at import time where neither
 the package nor the home folder may be written. So the cache folder is chosen here before numba is first imported:
-it is named after the package's version and the text of every file that holds compiled code, and is thrown away and
-made anew when it turns out to be damaged.
+it is named after the package's version and the text of every file that compiled code is made from, and each file in
+it lies beside its digest: what does not match is compiled anew.
 """
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
 import os
-import shutil
 import sys
 import tempfile
 import time
@@ -75,6 +75,38 @@ def compiled_code_folder() -> Path:
 def kernels_are_cached() -> bool:
     """True when compiled code is already there, so that a first use will not have to compile."""
     return any(compiled_code_folder().rglob("*.nbc"))
+
+
+def _digest_of(path: Path) -> str:
+    return hashlib.sha256(path.read_bytes()).hexdigest()
+
+
+def _digest_file(path: Path) -> Path:
+    return path.with_name(path.name + ".sha256")
+
+
+@cache
+def _drop_what_cannot_be_trusted(folder: Path) -> None:
+    """Remove cached files that are not what was written (an index or code without its digest, or another's).
+
+    numba would run or unpickle whatever it finds; what is missing it compiles anew. Once a process is enough: what
+    this process writes later it has just compiled.
+    """
+    for path in folder.rglob("*.nb[ic]"):
+        with contextlib.suppress(OSError):  # another process may be clearing up too
+            beside = _digest_file(path)
+            if not beside.is_file() or beside.read_text() != _digest_of(path):
+                path.unlink(missing_ok=True)
+
+
+def _write_digests(folder: Path) -> None:
+    for path in folder.rglob("*.nb[ic]"):
+        with contextlib.suppress(OSError):  # without its digest the file is only compiled again
+            beside, digest = _digest_file(path), _digest_of(path)
+            if not beside.is_file() or beside.read_text() != digest:
+                unfinished = beside.with_name(f"{beside.name}.{os.getpid()}")
+                unfinished.write_text(digest)
+                unfinished.replace(beside)
 
 
 def seconds_spent_compiling() -> float:
@@ -150,13 +182,8 @@ class _LateFunction:
         called: tuple[Callable[..., Any], ...],
         options: dict[str, Any],
     ) -> None:
-        self.plain, self._signature, self._inner, self._called, self._options = (
-            function,
-            signature,
-            inner,
-            called,
-            options,
-        )
+        self.plain, self._signature = function, signature
+        self._inner, self._called, self._options = inner, called, options
         self._compiled: Callable[..., Any] | None = None
         self.__doc__, self.__name__ = function.__doc__, function.__name__
 
@@ -179,15 +206,9 @@ class _LateFunction:
                 register_jitable(forceinline=function not in self._called)(function)
                 _REGISTERED.add(function)
         options: dict[str, Any] = {"cache": True, "nogil": True, "no_cfunc_wrapper": True, **self._options}
-        make = numba.njit(self._signature, **options)
-        try:
-            compiled: Callable[..., Any] = make(self.plain)
-        except (EOFError, TypeError, ValueError, AttributeError, ImportError, OSError) as trouble:
-            if isinstance(trouble, (TypeError, ValueError)) and not any(folder.rglob("*.nb?")):
-                raise
-            shutil.rmtree(folder, ignore_errors=True)  # a damaged cache is rebuilt, never trusted
-            folder.mkdir(parents=True, exist_ok=True)
-            compiled = make(self.plain)
+        _drop_what_cannot_be_trusted(folder)
+        compiled: Callable[..., Any] = numba.njit(self._signature, **options)(self.plain)
+        _write_digests(folder)
         return compiled
 
     def __call__(self, *arguments: Any) -> Any:
