@@ -49,7 +49,7 @@ class StageStream:
 
     def finish(self) -> np.ndarray:
         """The frames still held back; the take is zero after its end."""
-        rest = self._give([line.push(np.zeros(line.delay + 2)) for line in self._lines])
+        rest = self._give([line.push(np.zeros(line.delay + plain.LOOKAROUND)) for line in self._lines])
         return rest
 
     def _give(self, columns: list[np.ndarray]) -> np.ndarray:
