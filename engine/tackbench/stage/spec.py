@@ -9,7 +9,7 @@ from typing import Any
 from tackbench.errors import nearest
 from tackbench.parts import KIND_FAMILIES, PartEntry, PartsLibrary, read_parameters
 from tackbench.stage.kinds import KINDS, Kind
-from tackbench.stage.tapers import check_taper
+from tackbench.stage.tapers import check_no_taper_letter, check_taper
 from tackbench.values import Where, format_quantity, parse_position, parse_quantity, parse_tolerance, shown
 
 IN_PLACE = "in place"
@@ -125,9 +125,13 @@ def _pin_list(raw: Any, count: int, where: Where) -> list[str]:
     if count == 1:
         return [read_node(raw, where)]
     if not isinstance(raw, list) or len(raw) != count:
-        found = f"{len(raw)} nodes stand here" if isinstance(raw, list) else f"{shown(raw)} is no list of nodes"
+        found = f"{shown(raw)} is no list of nodes" if not isinstance(raw, list) else _count_words(len(raw))
         raise where.fault(found, f"list {count} nodes")
     return [read_node(item, where) for item in raw]
+
+
+def _count_words(count: int) -> str:
+    return "1 node stands here" if count == 1 else f"{count} nodes stand here"
 
 
 def read_model(kind_key: str, raw: Any, where: Where, library: PartsLibrary) -> Model:
@@ -150,6 +154,8 @@ def read_value(kind: Kind, raw: Any, where: Where) -> float:
         raise where.fault(
             f"a {kind.key} of {shown(raw)} is not allowed", "give a value above zero, or leave the part out"
         )
+    if kind.key == "pot" and isinstance(raw, str):
+        check_no_taper_letter(raw, where)
     return parse_quantity(raw, kind.unit, kind.rule, where)
 
 
