@@ -170,9 +170,7 @@ turn = { at = 1 }
 
 def test_oddities_that_the_format_allows(tmp_path: Path) -> None:
     """Zero ohms, capacitor loops, a capacitor across the supply, an inductor cutset, a pot at its ends."""
-    stage = stage_from(
-        LEGAL.replace("controls = { turn = { at = 1 } }", "") + "[controls]\nturn = { at = 1 }\n", tmp_path
-    )
+    stage = stage_from(LEGAL, tmp_path)
     for turn in (0, 1):
         assert stage.variant(turn=turn).circuit.parts
 

@@ -1,4 +1,4 @@
-"""Mangled stage files: whatever is broken in a well-formed one, the reader answers with a stage or with one sentence."""
+"""Mangled stage files: whatever is broken in a good one, the reader answers with a stage or with one sentence."""
 
 from __future__ import annotations
 
@@ -52,9 +52,7 @@ def words(node: Any) -> Iterator[str]:
 PLACES = list(places(DOCUMENT))
 SCALARS = st.one_of(
     st.sampled_from(sorted(set(words(DOCUMENT)))),
-    st.sampled_from(
-        ["", " ", "0", "-1", "1e999", "nan", "1n", "4k7", "100 kV", "½", "1,5k", "\u0000", "a=b", "T-AMP"]
-    ),
+    st.sampled_from(["", " ", "0", "-1", "1e999", "nan", "1n", "4k7", "9 kV", "½", "1,5k", "\u0000", "a=b", "T-AMP"]),
     st.text(max_size=8),
     st.integers(),
     st.floats(),
@@ -90,15 +88,20 @@ def change(document: dict[str, Any], path: tuple[Any, ...], how: str, value: Any
         holder.append(copy.deepcopy(found))
 
 
+def assert_readable(error: InputError) -> None:
+    """One line of moderate length that begins with the file."""
+    sentence = str(error)
+    assert sentence.startswith("my.toml")
+    assert sentence.isprintable(), sentence
+    assert len(sentence) < 600
+
+
 def judged(document: dict[str, Any], parts: PartsLibrary) -> None:
     """Read the document; an error must be one readable line that names the file."""
     try:
         stage = read_stage(document, "my", Path("my.toml"), parts)
     except InputError as error:
-        sentence = str(error)
-        assert sentence.startswith("my.toml")
-        assert sentence.isprintable(), sentence
-        assert len(sentence) < 600
+        assert_readable(error)
         return
     _walk(stage)
 
@@ -132,8 +135,7 @@ def test_mangled_text_gives_a_stage_or_a_sentence(parts: PartsLibrary, data: st.
     try:
         document = parse_toml(text.encode("utf-8", "surrogatepass"), "stage file", "my.toml")
     except InputError as error:
-        assert str(error).startswith("my.toml")
-        assert str(error).isprintable()
+        assert_readable(error)
         return
     judged(document, parts)
 
