@@ -13,7 +13,7 @@ from tackbench import load_stage
 from tackbench.circuit import Circuit, Part, Supply
 from tackbench.errors import InputError, WorkError
 from tackbench.kernel import plain
-from tackbench.render.prepared import QUALITY_STEPS, PreparedStage, Quality, prepare, prepare_with
+from tackbench.render.prepared import PreparedStage, Quality, prepare, prepare_with
 from tackbench.render.whole import render
 
 RATE = 48000
@@ -162,13 +162,13 @@ def test_a_whole_render_is_the_stream(tmp_path: object) -> None:
 
 def test_what_does_not_settle_names_time_variant_and_device(monkeypatch: pytest.MonkeyPatch) -> None:
     def gives_up(*arguments: np.ndarray) -> int:
-        fault = next(a for a in arguments if isinstance(a, np.ndarray) and a.shape == (4,) and a.dtype == float)
-        fault[:3] = (5, 0.5, 1)
+        arguments[-1 - len(plain.workspace(1, 1, 1))][:] = (500, 0.5, 1)  # the fault: interval, place, control
         return 1
 
+    monkeypatch.setenv("TACKBENCH_KERNEL", "plain")
     stage = prepare(clipper(), RATE, "standard")
     monkeypatch.setattr(plain, "advance", gives_up)
-    with pytest.raises(WorkError, match=r"clipper: the solver did not settle at 0\.0000\d\d s, worst at D2"):
+    with pytest.raises(WorkError, match=r"clipper: the solver did not settle at 0\.000\d+ s, worst at D2"):
         through(stage, chord(0.01))
 
 
@@ -188,8 +188,7 @@ def test_counts_are_those_of_the_solver() -> None:
     stream = stage.stream(2)
     stream.process(np.hstack([volts, volts]))
     stream.finish()
-    intervals = stream.counts.steps / (2 * 2 ** QUALITY_STEPS["draft"].coarsest)
-    assert intervals == pytest.approx(len(volts) * stage.factor, rel=0.1)
+    assert stream.counts.steps / 2 == pytest.approx(len(volts) * stage.factor, rel=0.25)
     assert stream.counts.iterations >= stream.counts.steps
     assert stream.counts.hard_steps == 0
 

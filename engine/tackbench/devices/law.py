@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
-from tackbench.devices.trace import Program, program
+from tackbench.devices.trace import Program, Traced, program, trace
 
 
 @dataclass(frozen=True)
@@ -25,9 +25,14 @@ class Law:
     parameters: tuple[str, ...]
 
     @cached_property
+    def traced(self) -> Traced:
+        """The law's graph with its derivatives."""
+        return trace(self.function, len(self.controls), len(self.parameters))
+
+    @cached_property
     def program(self) -> Program:
         """Statements for the currents and their partial derivatives."""
-        return program(self.function, len(self.controls), len(self.parameters))
+        return program(self.traced)
 
 
 @dataclass(frozen=True)

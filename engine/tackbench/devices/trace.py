@@ -163,7 +163,8 @@ class Graph:
             return self.select(a[0], d[1], d[2])
         raise ValueError(f"no derivative is known for {operation!r}")
 
-    def _depends(self, roots: Sequence[Expression]) -> list[int]:
+    def depends(self, roots: Sequence[Expression]) -> list[int]:
+        """The nodes that ``roots`` are made of, each after those that it uses."""
         needed, stack = set(), [root.index for root in roots]
         while stack:
             index = stack.pop()
@@ -178,7 +179,7 @@ class Graph:
         """Straight-line Python statements that compute ``roots``, and the text by which each root is then known."""
         name: dict[int, str] = {}
         lines: list[str] = []
-        for index in self._depends(roots):
+        for index in self.depends(roots):
             operation, *rest = self.nodes[index]
             if operation == "symbol":
                 name[index] = rest[0]
@@ -214,14 +215,34 @@ class Program:
     slopes: tuple[tuple[str, ...], ...]
 
 
-def program(law: Callable[..., Sequence[Any]], controls: int, parameters: int, prefix: str = "t") -> Program:
+@dataclass(frozen=True)
+class Traced:
+    """A law's graph over the symbols c0, c1, … and p0, p1, …: its currents and ``slopes[current][control]``."""
+
+    graph: Graph
+    currents: tuple[Expression, ...]
+    slopes: tuple[tuple[Expression, ...], ...]
+
+    @property
+    def roots(self) -> tuple[Expression, ...]:
+        """The currents, then their slopes row by row."""
+        return (*self.currents, *(slope for row in self.slopes for slope in row))
+
+
+def trace(law: Callable[..., Sequence[Any]], controls: int, parameters: int) -> Traced:
     """Trace ``law(operations, controls, parameters)`` and derive it."""
     graph = Graph()
     c = [graph.symbol(f"c{k}") for k in range(controls)]
     p = [graph.symbol(f"p{k}") for k in range(parameters)]
     currents = [graph.constant(value) for value in law(graph, c, p)]
-    slopes = [[graph.derivative(current, control) for control in c] for current in currents]
-    lines, names = graph.statements([*currents, *(slope for row in slopes for slope in row)], prefix)
-    count = len(currents)
+    slopes = [tuple(graph.derivative(current, control) for control in c) for current in currents]
+    return Traced(graph, tuple(currents), tuple(slopes))
+
+
+def program(traced: Traced, prefix: str = "t") -> Program:
+    """The statements of a traced law."""
+    lines, names = traced.graph.statements(traced.roots, prefix)
+    count = len(traced.currents)
+    controls = len(traced.slopes[0]) if traced.slopes else 0
     texts = [tuple(names[count + row * controls : count + (row + 1) * controls]) for row in range(count)]
     return Program(tuple(lines), tuple(names[:count]), tuple(texts))

@@ -8,10 +8,13 @@ interval. Nothing here knows a circuit: only coefficient sets and the laws.
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from tackbench.compiled import borrowed, njit_cached
-from tackbench.devices.table import MOST_CONTROLS, evaluate_devices
+from tackbench.devices.table import LAWS, MOST_CONTROLS, evaluate_devices
+from tackbench.kernel.problem import Problem
 
 ROWS = 4
 """Matrices that multiply are kept in blocks of so many rows."""
@@ -28,11 +31,11 @@ EMERGENCY_LEVELS = 14
 STEPS, ITERATIONS, HARD, CAPPED, REPEATED, COUNTS = 0, 1, 2, 3, 4, 5
 
 NEWTON_TOLERANCE = 1e-3
-_PLAIN_ITERATIONS = 12
+PLAIN_ITERATIONS = 12
 _HOMOTOPY_TRIALS = 400
 
 # Lagrange's polynomial through six samples at -2 … 3, as powers of t on [0, 1]: row = power, column = sample.
-_SIX_POINTS = np.linalg.inv(np.vander(np.arange(-2.0, 4.0), 6, increasing=True))
+SIX_POINTS = np.linalg.inv(np.vander(np.arange(-2.0, 4.0), 6, increasing=True))
 
 _evaluate = evaluate_devices()
 
@@ -173,7 +176,7 @@ def _homotopy(
         for row in range(K):
             goal[row] = start[row] + ahead * (r[row] - start[row])
         used = _newton(
-            Y, N, level, goal, c, j, g, _PLAIN_ITERATIONS, laws, first_control, first_current, first_parameter, p,
+            Y, N, level, goal, c, j, g, PLAIN_ITERATIONS, laws, first_control, first_current, first_parameter, p,
             control_of, current_of, scales, high, low, jacobian, order, step,
         )  # fmt: skip
         total += abs(used)
@@ -273,6 +276,38 @@ def workspace(n: int, K: int, m: int) -> tuple[np.ndarray, ...]:
     return (*vectors, *matrices, np.zeros(K, np.int64), np.zeros(K, np.int64))
 
 
+def arrays_of(problem: Problem) -> tuple[Any, ...]:
+    """What ``advance`` takes after the stream's own arrays and before ``counts``, in its order."""
+    laws = [LAWS[number] for number in problem.laws]
+    control_of = np.array([len(law.controls) for law in laws], dtype=np.int64)
+    current_of = np.array([len(law.currents) for law in laws], dtype=np.int64)
+    parameter_of = np.array([len(law.parameters) for law in laws], dtype=np.int64)
+    starts = [np.cumsum(lengths) - lengths for lengths in (control_of, current_of, parameter_of)]
+    a = problem.arrays
+    return (
+        *(_in_blocks(a["H"]), a["Y"], a["N"]),
+        *(_in_blocks(a[name]) for name in ("Q", "R", "error_map", "smoothing")),
+        *(_in_blocks(a["ABE"][None]), _whole(a["Y0"][None]), _whole(a["N0"][None]), _in_blocks(a["R0"][None])),
+        *(_whole(a["S0"][:, 0]), _whole(a["out_z"][0]), _whole(a["out_U"][0])),
+        *(np.array(problem.laws, dtype=np.int64), *starts, a["parameters"], control_of, current_of),
+        *(a["scales"], a["high"], a["low"]),
+        *(problem.base_step, problem.coarsest, problem.finest, problem.tolerance, a["weights"]),
+    )
+
+
+def _whole(array: np.ndarray) -> np.ndarray:
+    return np.ascontiguousarray(array)
+
+
+def _in_blocks(matrices: np.ndarray) -> np.ndarray:
+    """Matrices (…, rows, columns) as ``_add`` takes them: (…, blocks of rows, columns, rows in a block)."""
+    count, rows, columns = matrices.shape
+    blocks = -(-rows // ROWS)
+    filled = np.zeros((count, blocks * ROWS, columns))
+    filled[:, :rows] = matrices
+    return np.ascontiguousarray(filled.reshape(count, blocks, ROWS, columns).swapaxes(-1, -2))
+
+
 @njit_cached(
     f"int64({_STREAM}, {_SETS}, {_REST}, {_BANK}, {_LIMITS}, {_CHOICES}, {_WORK})",
     inner=(
@@ -307,9 +342,9 @@ def advance(
     ``z`` = (X, c, j), its slopes and the controls' ``bend`` (half their second derivatives) are the circuit's
     condition, kept from call to call. Matrices that multiply are kept in blocks of rows. ``fault`` is (base interval,
     place within it, control that did not settle). ``weights`` turn states into volts for ``tolerance`` (volts); an
-    infinite tolerance keeps to the level ``coarsest`` and to the bare rule. Otherwise the estimated local error is
-    taken off, smoothed twice by the step's own Jacobian: that makes the rule third order and damps what the trapezoid
-    would let ring (its growth at infinite stiffness falls from -1 to -1/3).
+    infinite tolerance keeps to the level ``coarsest``, where that can be solved, and to the bare rule. Otherwise the
+    estimated local error is taken off, smoothed twice by the step's own Jacobian: that makes the rule third order and
+    damps what the trapezoid would let ring (its growth at infinite stiffness falls from -1 to -1/3).
     """
     (
         u, out, z, z_slope, bend, kept_level,
@@ -346,7 +381,7 @@ def advance(
         for k in range(6):
             power[k] = 0.0
             for i in range(6):
-                power[k] += _SIX_POINTS[k, i] * u[interval + i]
+                power[k] += SIX_POINTS[k, i] * u[interval + i]
         place, next_dense = 0, 1
         while place < whole:
             span = 1 << (last - level)
@@ -372,7 +407,7 @@ def advance(
                 r[k] = target[k]
                 c1[k] = z[n + k] + h * (z_slope[n + k] + h * bend[k])
             used = _newton(
-                Y, N, level, r, c1, j1, g, _PLAIN_ITERATIONS, laws, first_control, first_current,
+                Y, N, level, r, c1, j1, g, PLAIN_ITERATIONS, laws, first_control, first_current,
                 first_parameter, p, control_of, current_of, scales, high, low, jacobian, order, step,
             )  # fmt: skip
             counts[ITERATIONS] += abs(used)

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import cached_property
 from types import MappingProxyType
 from typing import TYPE_CHECKING, Any
 
@@ -11,9 +12,9 @@ import numpy as np
 
 from tackbench.audio.resample import base_factor
 from tackbench.circuit import Circuit
-from tackbench.devices.table import LAWS
 from tackbench.errors import InputError, nearest
-from tackbench.kernel.plain import EMERGENCY_LEVELS, ROWS
+from tackbench.kernel.plain import EMERGENCY_LEVELS, arrays_of
+from tackbench.kernel.problem import Problem
 from tackbench.network.model import NetworkModel, network_model
 from tackbench.network.operating_point import OperatingPoint, settle
 from tackbench.network.rules import CoefficientSets, coefficient_sets, root_form
@@ -28,7 +29,7 @@ NUMERICS = 1
 @dataclass(frozen=True)
 class Quality:
     """A rule and how finely it steps: between ``coarsest`` and ``finest`` halvings of the base interval, by a local
-    error of ``tolerance`` volts (infinite: always at the coarsest)."""
+    error of ``tolerance`` volts (infinite: at the coarsest, unless a step cannot be solved there)."""
 
     rule: str
     coarsest: int
@@ -38,7 +39,7 @@ class Quality:
 
 QUALITY_STEPS: Mapping[str, Quality] = MappingProxyType(
     {
-        "draft": Quality("trapezoid", 1, 1, float("inf")),
+        "draft": Quality("trapezoid", 0, 5, 2e-3),
         "standard": Quality("trapezoid", 0, 8, 5e-5),
         "best": Quality("trapezoid", 0, 9, 7e-6),
     }
@@ -50,7 +51,8 @@ QUALITIES = tuple(QUALITY_STEPS)
 class PreparedStage:
     """A circuit at one take rate and quality, ready to be streamed through any number of times, from any thread.
 
-    ``output_dc`` is the output's voltage at the operating point; ``rule`` the rule in use ("exact", "trapezoid").
+    ``rule`` is the one in use ("exact", "trapezoid"); ``problem`` what the kernels take; ``output_dc`` the output's
+    voltage at the operating point; ``start`` the circuit at rest, (X, c, j).
     """
 
     circuit: Circuit
@@ -60,9 +62,9 @@ class PreparedStage:
     model: NetworkModel
     rest: OperatingPoint
     rule: str
+    problem: Problem
     output_dc: float
     warnings: tuple[str, ...]
-    kernel_arrays: tuple[Any, ...]
     start: np.ndarray
 
     def stream(self, channels: int) -> StageStream:
@@ -70,6 +72,13 @@ class PreparedStage:
         from tackbench.render.stream import StageStream
 
         return StageStream(self, channels)
+
+    @cached_property
+    def plain_arrays(self) -> tuple[Any, ...]:
+        """What the plain kernel takes: with levels enough for a step that is hard to solve."""
+        levels = max(self.quality.finest, EMERGENCY_LEVELS) + 1
+        sets = coefficient_sets(root_form(self.model.state), self.problem.base_step, levels, self.quality.rule)
+        return arrays_of(replace(self.problem, arrays={**self.problem.arrays, **_leveled(sets)}))
 
 
 def prepare(circuit: Circuit, rate: int, quality: str = "standard") -> PreparedStage:
@@ -87,25 +96,41 @@ def prepare_with(circuit: Circuit, rate: int, quality: Quality) -> PreparedStage
     factor = base_factor(rate)
     model = network_model(circuit)
     rest = settle(model)
-    form = root_form(model.state)
     base_step = 1.0 / (rate * factor)
-    levels = max(quality.finest, EMERGENCY_LEVELS) + 1
-    sets = coefficient_sets(form, base_step, levels, quality.rule)
-    output = _output_maps(model, circuit)
-    z = np.concatenate([rest.X, rest.c, rest.j])
-    return PreparedStage(
-        circuit=circuit,
-        rate=rate,
-        factor=factor,
-        quality=quality,
-        model=model,
-        rest=rest,
-        rule=sets.rule,
-        output_dc=float(output[0] @ z + output[1][1]),
-        warnings=rest.warnings,
-        kernel_arrays=_kernel_arrays(model, sets, output, base_step, quality),
-        start=z,
+    sets = coefficient_sets(root_form(model.state), base_step, quality.finest + 1, quality.rule)
+    state, bank, K = model.state, model.bank, model.state.controls
+    of_z, of_U = _output_maps(model, circuit)
+    fixed = {
+        "ABE": np.hstack([state.A, state.B, state.E]),
+        "Y0": state.F[:, :K],
+        "N0": state.F[:, K:],
+        "R0": state.R,
+        "S0": state.S[:, :1],
+        "out_z": of_z[None],
+        "out_U": of_U[None],
+    }
+    limits = {"scales": bank.scales, "high": bank.high_knees, "low": bank.low_knees}
+    problem = Problem(
+        n=state.states,
+        K=K,
+        m=state.currents,
+        laws=tuple(int(law) for law in bank.laws),
+        arrays={**_leveled(sets), **fixed, **limits, "parameters": bank.parameters, "weights": state.scales},
+        base_step=base_step,
+        coarsest=quality.coarsest,
+        finest=quality.finest,
+        tolerance=quality.tolerance,
     )
+    start = np.concatenate([rest.X, rest.c, rest.j])
+    dc = float(of_z @ start + of_U[1])
+    return PreparedStage(circuit, rate, factor, quality, model, rest, sets.rule, problem, dc, rest.warnings, start)
+
+
+def _leveled(sets: CoefficientSets) -> dict[str, np.ndarray]:
+    """The coefficient sets by the names that the kernels know them by."""
+    error_map = np.concatenate([sets.error_X, sets.error_s, sets.error_u[:, :, None]], axis=2)
+    matrices = {"H": sets.H, "Y": sets.Y, "N": sets.N, "Q": sets.Q, "R": sets.R}
+    return {**matrices, "error_map": error_map, "smoothing": sets.smoothing}
 
 
 def _output_maps(model: NetworkModel, circuit: Circuit) -> tuple[np.ndarray, np.ndarray]:
@@ -114,37 +139,3 @@ def _output_maps(model: NetworkModel, circuit: Circuit) -> tuple[np.ndarray, np.
     if node < 0:
         return np.zeros(state.states + state.controls + state.currents), np.zeros(2)
     return np.concatenate([state.nodes_X[node], state.nodes_s[node]]), state.nodes_U[node].copy()
-
-
-def _in_blocks(matrices: np.ndarray) -> np.ndarray:
-    """Matrices (…, rows, columns) as the kernel takes them: (…, blocks of rows, columns, rows in a block)."""
-    count, rows, columns = matrices.shape
-    blocks = -(-rows // ROWS)
-    filled = np.zeros((count, blocks * ROWS, columns))
-    filled[:, :rows] = matrices
-    return np.ascontiguousarray(filled.reshape(count, blocks, ROWS, columns).swapaxes(-1, -2))
-
-
-def _kernel_arrays(
-    model: NetworkModel,
-    sets: CoefficientSets,
-    output: tuple[np.ndarray, np.ndarray],
-    base_step: float,
-    quality: Quality,
-) -> tuple[Any, ...]:
-    """What ``kernel.plain.advance`` takes after the stream's own arrays, in its order."""
-    state, bank = model.state, model.bank
-    K = state.controls
-    error_map = np.concatenate([sets.error_X, sets.error_s, sets.error_u[:, :, None]], axis=2)
-    current_of = np.array([len(LAWS[law].currents) for law in bank.laws], dtype=np.int64)
-    return (
-        *(_in_blocks(sets.H), sets.Y, sets.N, _in_blocks(sets.Q), _in_blocks(sets.R)),
-        *(_in_blocks(error_map), _in_blocks(sets.smoothing)),
-        _in_blocks(np.hstack([state.A, state.B, state.E])[None]),
-        *(np.ascontiguousarray(state.F[None, :, :K]), np.ascontiguousarray(state.F[None, :, K:])),
-        *(_in_blocks(state.R[None]), np.ascontiguousarray(state.S[:, 0])),
-        *output,
-        *(bank.laws, bank.first_control, bank.first_current, bank.first_parameter, bank.parameters),
-        *(bank.control_of, current_of, bank.scales, bank.high_knees, bank.low_knees),
-        *(base_step, quality.coarsest, quality.finest, quality.tolerance, state.scales),
-    )
