@@ -31,5 +31,5 @@ def compile_kernels() -> None:
     if kernels_are_cached():
         warm_up()
         return
-    tell("first run: compiling the numerical kernels, once (this may take a minute) ...")
-    tell(f"compiled in {warm_up():.0f} s and kept for later runs")
+    tell("first run: compiling the numerical kernels, once (a few seconds) ...")
+    tell(f"compiled in {warm_up():.1f} s and kept for later runs")

@@ -37,6 +37,15 @@ class UnsolvedError(WorkError):
         self.stage = stage
 
 
+def side_by_side(stages: Sequence[PreparedStage], channels: int) -> list[list[int]]:
+    """Which stages, by place, to stream together: those of one family, as many as fill a kernel's lanes."""
+    families: dict[object, list[int]] = {}
+    for index, stage in enumerate(stages):
+        families.setdefault(family(stage.problem), []).append(index)
+    most = max(1, MOST_LANES // max(1, channels))
+    return [own[start : start + most] for own in families.values() for start in range(0, len(own), most)]
+
+
 class GroupStream:
     """A take's way through several stages at once, block by block, in constant memory.
 

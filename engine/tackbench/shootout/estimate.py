@@ -12,7 +12,7 @@ from tackbench.audio import Take
 from tackbench.audio.files import audio_bytes
 from tackbench.audio.place import size_words
 from tackbench.audio.scratch import BYTES_PER_SAMPLE
-from tackbench.render import prepare
+from tackbench.render import MOST_LANES, prepare
 from tackbench.shootout.survey import Survey
 from tackbench.stage import Variant
 
@@ -50,13 +50,16 @@ def _duration(seconds: float) -> str:
 def estimate(take: Take, looked: Survey, variants: Sequence[Variant], quality: str, threads: int) -> Estimate:
     """Sizes by counting, seconds by sending a few tenths of a second of the take through the first variant."""
     per_file = audio_bytes(take.frames, take.channels, SUBTYPE)
-    at_once = max(1, min(threads, len(variants)))
     working = _seconds_per_frame(take, looked, variants[0], quality) * take.frames if variants else 0.0
+    # lanes work side by side: a full block of them takes about as long as one circuit alone
+    blocks_of_one = -(-take.channels // MOST_LANES)
+    blocks = -(-len(variants) * take.channels // MOST_LANES)
+    rounds = -(-blocks // max(1, threads))
     return Estimate(
         files=len(variants) + 1,
         final_bytes=(len(variants) + 1) * per_file + SPARE,
         temporary_bytes=len(variants) * take.frames * take.channels * BYTES_PER_SAMPLE,
-        seconds=working * -(-len(variants) // at_once),
+        seconds=working / blocks_of_one * rounds,
     )
 
 

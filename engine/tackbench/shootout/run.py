@@ -17,7 +17,7 @@ from tackbench.audio.names import safe_names
 from tackbench.audio.place import check_room
 from tackbench.audio.scratch import ScratchAudio
 from tackbench.errors import InputError, nearest
-from tackbench.render import NUMERICS, QUALITIES
+from tackbench.render import NUMERICS, QUALITIES, side_by_side
 from tackbench.report import page
 from tackbench.shootout.entries import about_variant, bypass_entry, left_out_entry, take_entry, variant_entry
 from tackbench.shootout.estimate import SUBTYPE, Estimate, estimate
@@ -36,7 +36,7 @@ from tackbench.shootout.plan import Plan, make_plan, words_of
 from tackbench.shootout.remarks import remarks
 from tackbench.shootout.survey import Survey, survey
 from tackbench.shootout.threads import Report, Tally, in_threads
-from tackbench.shootout.volts import Volts, render_volts
+from tackbench.shootout.volts import Volts, prepare_variant, render_volts
 from tackbench.shootout.writing import Written, write_bypass, write_volts
 from tackbench.stage import Stage, load_stage
 
@@ -144,13 +144,24 @@ class Job:
 
     def _render(self, stores: Sequence[ScratchAudio], report: Report) -> Sequence[Volts]:
         """The first pass over every live variant, in threads."""
-        tally = Tally(len(self.live) * self.take.frames)
+        take, tally = self.take, Tally(len(self.live) * self.take.frames)
+        prepared = [
+            prepare_variant(take, self.plan.variants[index], self.words[index], self.quality, store)
+            for index, store in zip(self.live, stores, strict=True)
+        ]
+        groups = side_by_side([one.stage for one in prepared], take.channels)
+        groups.sort(key=len, reverse=True)  # the longest work first, so that no thread is left with it alone
 
-        def work(item: tuple[int, ScratchAudio]) -> Volts:
-            variant = self.plan.variants[item[0]]
-            return render_volts(self.take, variant, self.words[item[0]], self.quality, item[1], tally.advance)
+        def work(group: list[int]) -> list[Volts]:
+            return render_volts(take, [prepared[index] for index in group], tally.advance)
 
-        return in_threads(work, list(zip(self.live, stores, strict=True)), self.threads, tally, report)
+        made = in_threads(work, groups, self.threads, tally, report)
+        found = {
+            index: one
+            for group, volts in zip(groups, made, strict=True)
+            for index, one in zip(group, volts, strict=True)
+        }
+        return [found[index] for index in range(len(prepared))]
 
     def _write(
         self,

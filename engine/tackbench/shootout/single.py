@@ -24,7 +24,7 @@ from tackbench.shootout.remarks import solver_words
 from tackbench.shootout.run import check_quality
 from tackbench.shootout.survey import Survey, survey
 from tackbench.shootout.threads import Report, Tally, in_threads
-from tackbench.shootout.volts import Volts, render_volts
+from tackbench.shootout.volts import Volts, prepare_variant, render_volts
 from tackbench.shootout.writing import Written, write_volts
 from tackbench.stage import Variant
 
@@ -95,7 +95,8 @@ class FileJob:
         tally = Tally(self.take.frames)
 
         def work(variant: Variant) -> Volts:
-            return render_volts(self.take, variant, variant.words(), self.quality, store, tally.advance)
+            prepared = prepare_variant(self.take, variant, variant.words(), self.quality, store)
+            return render_volts(self.take, [prepared], tally.advance)[0]
 
         return in_threads(work, [self.variant], 1, tally, report)[0]
 

@@ -1,11 +1,10 @@
-"""The first pass: one variant's output volts, kept aside and measured while they are made."""
+"""The first pass: the variants' output volts, kept aside and measured while they are made."""
 
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import asdict, dataclass
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,7 +15,7 @@ from tackbench.audio.loudness import LoudnessMeter
 from tackbench.audio.scratch import ScratchAudio
 from tackbench.errors import InputError, WorkError
 from tackbench.network import response
-from tackbench.render import PreparedStage, prepare
+from tackbench.render import GroupStream, PreparedStage, UnsolvedError, prepare
 from tackbench.stage import Variant
 
 BLOCK_FRAMES = 2048
@@ -45,31 +44,57 @@ class Volts:
     seconds: float
 
 
-def render_volts(
-    take: Take, variant: Variant, words: str, quality: str, scratch: ScratchAudio, advance: Callable[[float], None]
-) -> Volts:
-    """Send the take through the variant and write its volts to ``scratch``, as many frames as the take has.
+@dataclass(frozen=True)
+class Prepared:
+    """A variant ready for the first pass, its words, and the scratch file that its volts go to."""
 
-    ``advance`` is told the frames of each block that is done, and may raise to end the work. Errors are led by the
-    variant's ``words``.
-    """
-    began = time.thread_time()
+    stage: PreparedStage
+    polarity: str
+    words: str
+    scratch: ScratchAudio
+
+
+def prepare_variant(take: Take, variant: Variant, words: str, quality: str, scratch: ScratchAudio) -> Prepared:
+    """Make a variant ready. Errors are led by the variant's ``words``."""
     try:
-        prepared = prepare(variant.circuit, take.rate, quality)
-        keeper = _Keeper(take, prepared, scratch)
-        counts = _through(take, prepared, keeper, advance)
-        polarity = polarity_of(response(variant.circuit, MID_FREQUENCIES))
+        stage = prepare(variant.circuit, take.rate, quality)
+        return Prepared(stage, polarity_of(response(variant.circuit, MID_FREQUENCIES)), words, scratch)
     except (InputError, WorkError) as trouble:
         raise type(trouble)(f"{words}: {trouble}") from trouble
-    return Volts(
-        rest=prepared.output_dc,
-        levels=keeper.levels.result(),
-        loudness=keeper.loudness,
-        counts=counts,
-        warnings=tuple(prepared.warnings),
-        polarity=polarity,
-        seconds=time.thread_time() - began,
-    )
+
+
+def render_volts(take: Take, group: Sequence[Prepared], advance: Callable[[float], None]) -> list[Volts]:
+    """Send the take through the variants of a group, side by side, and write each one's volts to its scratch file.
+
+    ``advance`` is told the frames of each block that is done, times the variants, and may raise to end the work.
+    Errors are led by the variant's words; the seconds of the work are shared out evenly.
+    """
+    began = time.thread_time()
+    stages = [one.stage for one in group]
+    stream = GroupStream(stages, take.channels)
+    keepers = [_Keeper(take, one.stage, one.scratch) for one in group]
+    try:
+        for block in take.blocks(BLOCK_FRAMES):
+            for keeper, volts in zip(keepers, stream.process(block * take.volts_per_full_scale), strict=True):
+                keeper.keep(volts)
+            advance(len(block) * len(group))
+        for keeper, volts in zip(keepers, stream.finish(), strict=True):
+            keeper.keep(volts)
+    except UnsolvedError as trouble:
+        raise WorkError(f"{group[trouble.stage].words}: {trouble}") from trouble
+    seconds = (time.thread_time() - began) / len(group)
+    return [
+        Volts(
+            rest=one.stage.output_dc,
+            levels=keeper.levels.result(),
+            loudness=keeper.loudness,
+            counts=asdict(counts),
+            warnings=tuple(one.stage.warnings),
+            polarity=one.polarity,
+            seconds=seconds,
+        )
+        for one, keeper, counts in zip(group, keepers, stream.counts, strict=True)
+    ]
 
 
 class _Keeper:
@@ -84,18 +109,6 @@ class _Keeper:
         self._scratch.append(volts)
         self.levels.add(volts)
         self.loudness.add((volts - self._rest) / self._full_scale)
-
-
-def _through(
-    take: Take, prepared: PreparedStage, keeper: _Keeper, advance: Callable[[float], None]
-) -> dict[str, Any]:
-    """Stream the take block by block; the solver's counts."""
-    stream = prepared.stream(take.channels)
-    for block in take.blocks(BLOCK_FRAMES):
-        keeper.keep(stream.process(block * take.volts_per_full_scale))
-        advance(len(block))
-    keeper.keep(stream.finish())
-    return asdict(stream.counts)
 
 
 def polarity_of(gains: NDArray[np.complex128]) -> str:
