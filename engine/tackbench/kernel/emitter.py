@@ -18,11 +18,11 @@ from llvmlite import ir
 from tackbench.devices.table import LAWS
 from tackbench.kernel.plain import DENSE, NEWTON_TOLERANCE, PLAIN_ITERATIONS, SIX_POINTS
 from tackbench.kernel.problem import LEVELED
+from tackbench.kernel.rows import Factors, Row, Rows
 from tackbench.kernel.shape import Shape
 from tackbench.kernel.vector import F64, I64, Lanes
 
 ENTRY = "advance"
-
 
 _SMALL = 0.08  # of the tolerance: an error below it lets the next step be longer
 _ARGUMENTS = (
@@ -43,9 +43,6 @@ _ARGUMENTS = (
     ("last", I64),
     ("tolerance", F64),
 )
-
-Row = list[Any]
-"""Vectors of lanes, None where a value is known to be zero."""
 
 
 def emit(shape: Shape, fused: bool) -> str:
@@ -69,18 +66,11 @@ def emit(shape: Shape, fused: bool) -> str:
     return str(module)
 
 
-class _Factors:
-    """LU factors of a matrix of lanes: entries, inverse pivots, and the row exchanges as flags of lanes."""
-
-    def __init__(self, entries: list[Row], inverses: Row, exchanges: list[tuple[int, int, ir.Value]]) -> None:
-        self.entries, self.inverses, self.exchanges = entries, inverses, exchanges
-
-
-class _Emitter:
+class _Emitter(Rows):
     def __init__(self, shape: Shape, function: ir.Function, fused: bool) -> None:
         self.shape, self.function = shape, function
-        self.b = ir.IRBuilder(function.append_basic_block("entry"))
-        self.v = Lanes(self.b, shape.width, fused)
+        builder = ir.IRBuilder(function.append_basic_block("entry"))
+        super().__init__(Lanes(builder, shape.width, fused))
         self.a = dict(zip((name for name, _ in _ARGUMENTS), function.args, strict=True))
         self.sizes = shape.n, shape.K, shape.m
         self.controls, self.currents, self.parameters = self._places()
@@ -109,31 +99,12 @@ class _Emitter:
             return None
         return self.v.load(self.coefficients if name in LEVELED else self.a["fixed"], slot)
 
-    def add(self, a: Any, b: Any) -> Any:
-        if a is None or b is None:
-            return b if a is None else a
-        return self.b.fadd(a, b)
-
-    def subtract(self, a: Any, b: Any) -> Any:
-        if b is None:
-            return a
-        return self.b.fneg(b) if a is None else self.b.fsub(a, b)
-
-    def add_product(self, total: Any, x: Any, y: Any) -> Any:
-        if x is None or y is None:
-            return total
-        return self.b.fmul(x, y) if total is None else self.v.multiply_add(x, y, total)
-
-    def full(self, value: Any) -> ir.Value:
-        return self.v.number(0.0) if value is None else value
-
-    def times(self, name: str, vector: Row, start: Row | None = None, rows: Sequence[int] | None = None) -> Row:
+    def times(self, name: str, vector: Row, start: Row | None = None) -> Row:
         """``start`` plus the matrix times ``vector``."""
         flags = self.shape.flags[name]
-        rows = range(flags.shape[0]) if rows is None else rows
         result: Row = []
-        for place, row in enumerate(rows):
-            total = None if start is None else start[place]
+        for row in range(len(flags)):
+            total = None if start is None else start[row]
             for column in np.flatnonzero(flags[row]):
                 if vector[column] is not None:
                     total = self.add_product(total, self.entry(name, row, int(column)), vector[column])
@@ -168,56 +139,6 @@ class _Emitter:
             matrix.append(entries)
         return matrix
 
-    def factor(self, matrix: list[Row], guarded: bool) -> _Factors:
-        """LU with row exchanges chosen lane by lane; ``guarded``: a pivot of zero counts as infinite."""
-        a, size = [list(row) for row in matrix], len(matrix)
-        inverses: Row = []
-        exchanges: list[tuple[int, int, ir.Value]] = []
-        for k in range(size):
-            for i in range(k + 1, size):
-                if a[i][k] is None:
-                    continue
-                flag = self.v.greater(self.v.magnitude(a[i][k]), self.v.magnitude(self.full(a[k][k])))
-                exchanges.append((k, i, flag))
-                for j in range(size):
-                    a[k][j], a[i][j] = self.exchanged(flag, a[k][j], a[i][j])
-            pivot = self.full(a[k][k])
-            inverse = self.b.fdiv(self.v.number(1.0), pivot)
-            if guarded:
-                is_zero = self.b.fcmp_ordered("==", pivot, self.v.number(0.0))
-                inverse = self.b.select(is_zero, self.v.number(0.0), inverse)
-            inverses.append(inverse)
-            for i in range(k + 1, size):
-                if a[i][k] is None:
-                    continue
-                a[i][k] = self.b.fmul(a[i][k], inverse)
-                less = self.b.fneg(a[i][k])
-                for j in range(k + 1, size):
-                    a[i][j] = self.add_product(a[i][j], less, a[k][j])
-        return _Factors(a, inverses, exchanges)
-
-    def exchanged(self, flag: ir.Value, x: Any, y: Any) -> tuple[Any, Any]:
-        if x is None and y is None:
-            return None, None
-        x, y = self.full(x), self.full(y)
-        return self.b.select(flag, y, x), self.b.select(flag, x, y)
-
-    def solve(self, factors: _Factors, right: Row) -> Row:
-        x, size = list(right), len(right)
-        for k, i, flag in factors.exchanges:
-            x[k], x[i] = self.exchanged(flag, x[k], x[i])
-        for k in range(size):
-            if x[k] is not None:
-                for i in range(k + 1, size):
-                    if factors.entries[i][k] is not None:
-                        x[i] = self.add_product(x[i], self.b.fneg(factors.entries[i][k]), x[k])
-        for k in range(size - 1, -1, -1):
-            for j in range(k + 1, size):
-                if factors.entries[k][j] is not None and x[j] is not None:
-                    x[k] = self.add_product(x[k], self.b.fneg(factors.entries[k][j]), x[j])
-            x[k] = None if x[k] is None else self.b.fmul(x[k], factors.inverses[k])
-        return x
-
     # ------------------------------------------------------------ the circuit's equations
 
     def evaluate(self, c: Row) -> tuple[Row, list[Row]]:
@@ -244,14 +165,14 @@ class _Emitter:
             g += [[known[slope.index] for slope in row] for row in traced.slopes]
         return j, g
 
-    def slopes(self, z: Row, u: Any, u_slope: Any, g: list[Row], rest: _Factors) -> Row:
+    def slopes(self, z: Row, u: Any, u_slope: Any, g: list[Row], rest: Factors) -> Row:
         """Slopes of (X, c, j) where they are ``z``; see ``plain._slopes``."""
         of_X = self.times("ABE", [*z, u, self.v.number(1.0)])
         driven = [self.add_product(None, self.fixed("S0", k, 0), u_slope) for k in range(self.shape.K)]
         of_c = self.solve(rest, self.times("R0", of_X, driven))
         return [*of_X, *self.with_currents(of_c, g)]
 
-    def closed(self, error: Row, g: list[Row], factors: _Factors) -> tuple[Row, Row]:
+    def closed(self, error: Row, g: list[Row], factors: Factors) -> tuple[Row, Row]:
         """An error as the root lets it through, and the change of (c, j) that goes with it; see ``plain._close``."""
         change = self.with_currents(self.solve(factors, self.times("R", error)), g)
         return self.times("Q", change, error), change
@@ -433,14 +354,14 @@ class _Emitter:
         true = v.flags(True)
         return (true, true) if within is None else (within, small)
 
-    def _newton(self, right: Row, start: Row, mask: ir.Value) -> tuple[Row, Row, list[Row], _Factors, Any, Any]:
+    def _newton(self, right: Row, start: Row, mask: ir.Value) -> tuple[Row, Row, list[Row], Factors, Any, Any]:
         """The root; a lane that has settled keeps the controls its last step was taken from, so that its currents and
         factors come out again the same while others go on. Returns c, j, g, factors, settled lanes, iterations."""
         b, v = self.b, self.v
         K = self.shape.K
         true = v.flags(True)
         if K == 0:
-            return [], [], [], _Factors([], [], []), true, v.integer(0)
+            return [], [], [], Factors([], [], []), true, v.integer(0)
         before = b.block
         loop = self.function.append_basic_block("newton")
         again = self.function.append_basic_block("newton_again")
