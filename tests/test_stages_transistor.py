@@ -61,7 +61,7 @@ N2N5088 = Bipolar(5.911e-15, 520.0, 1.271, 62.37, 0.0, 4.973e-12, 4.017e-12)
 BC549A = Bipolar(1.39e-14, 156.0, 4.0, 80.0, 0.0, 9e-12, 3.5e-12)
 BC549C = Bipolar(1.39e-14, 580.0, 4.0, 80.0, 0.0, 9e-12, 3.5e-12)
 AC128 = Bipolar(1.5e-6, 98.0, 10.0, 35.0, 2e-6, 1e-9, 1e-10)
-AC128_LEAKY = Bipolar(1.5e-6, 98.0, 10.0, 35.0, 10e-6, 1e-9, 1e-10)
+AC128_HIGH = Bipolar(1.5e-6, 175.0, 10.0, 35.0, 10e-6, 1e-9, 1e-10)
 
 
 def divider_bias(
@@ -210,7 +210,7 @@ def test_mosfet_booster(
 
 @pytest.mark.parametrize(
     ("transistor", "device", "range_", "farads"),
-    [("germanium", AC128, "treble", 3.3e-9), ("leaky", AC128_LEAKY, "full", 100e-9)],
+    [("germanium", AC128, "treble", 3.3e-9), ("leaky", AC128_HIGH, "full", 100e-9)],
 )
 def test_treble_booster(transistor: str, device: Bipolar, range_: str, farads: float) -> None:
     volts, gains = solved("treble-booster", transistor=transistor, range=range_, boost=1.0)

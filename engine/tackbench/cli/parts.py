@@ -14,7 +14,7 @@ from tackbench.errors import InputError, nearest
 from tackbench.parts import PartEntry, PartsLibrary, known_kinds, load_parts
 from tackbench.values import format_quantity
 
-FROM_MEMORY = "from memory: no sheet was read for these figures, so treat them as a starting point"
+FROM_MEMORY = "From memory in part or whole (see the source): treat those figures as a starting point"
 
 
 @click.command("parts")
@@ -34,7 +34,7 @@ def _chosen(library: PartsLibrary, what: str | None) -> Iterator[str]:
     if what is None:
         for kind in known_kinds():
             yield from _kind(library, kind)
-        yield "* from memory, no sheet was read.  One of them in full: tackbench parts NAME"
+        yield "* figures from memory, in part or whole.  One of them in full: tackbench parts NAME"
         return
     if what.casefold() in known_kinds():
         yield from _kind(library, what.casefold())
@@ -101,6 +101,6 @@ def _provenance(entry: PartEntry) -> Iterator[str]:
     if entry.fit_error_millivolts is not None:
         yield f"Fit: within {entry.fit_error_millivolts:g} mV of {len(entry.points)} points"
     if entry.from_memory:
-        yield FROM_MEMORY.capitalize()
+        yield FROM_MEMORY
     if entry.own:
         yield f"From your own file {entry.file}"

@@ -12,6 +12,7 @@ from tackbench.devices import opamp
 from tackbench.devices.bank import DeviceBank
 from tackbench.devices.trace import NUMBERS
 from tackbench.errors import WorkError
+from tackbench.network.margins import margin_warnings
 from tackbench.network.model import NetworkModel, network_model
 from tackbench.network.newton import newton
 from tackbench.network.steady import SteadyEquations, steady_equations
@@ -77,7 +78,8 @@ def settle(model: NetworkModel) -> OperatingPoint:
     }
     outputs = {part.ref: node_volts[part.pin("out")] for part in elements.circuit.parts if part.kind == "opamp"}
     supply = _supply_current(model, volts, currents, internals, j)
-    return OperatingPoint(node_volts, outputs, supply, (), c, j, X)
+    warnings = margin_warnings(elements.circuit, node_volts)
+    return OperatingPoint(node_volts, outputs, supply, warnings, c, j, X)
 
 
 def solve_at_rest(model: NetworkModel, equations: SteadyEquations) -> np.ndarray:

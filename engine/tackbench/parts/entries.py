@@ -17,6 +17,10 @@ _TEXTS = ("about", "source", "conditions", "basis")
 _OTHERS = ("family", "polarity", "aliases", "from_memory", "fit_error_millivolts", "low", "high", "points")
 
 
+BOUNDS = ("low", "typical", "high")
+"""What may follow an entry's name where a model is named: the ends of its spread, and the middle."""
+
+
 @dataclass(frozen=True)
 class PartEntry:
     """A device type. ``parameters`` is its complete typical set at 25 degrees C, SI, in the keys of ``FAMILIES``;
@@ -43,6 +47,10 @@ class PartEntry:
     points: tuple[tuple[float, float], ...] = ()
     file: str = ""
     own: bool = False
+
+    def at_bound(self, bound: str) -> Mapping[str, Any] | None:
+        """The complete parameters at one of ``BOUNDS``; None when the entry does not have that bound."""
+        return {"low": self.low, "typical": self.parameters, "high": self.high}[bound]
 
     def provenance(self) -> dict[str, Any]:
         """Where the figures come from, ready for JSON."""

@@ -8,9 +8,10 @@ from dataclasses import dataclass, field
 from functools import cache
 from importlib.resources.abc import Traversable
 from pathlib import Path
+from typing import Any
 
 from tackbench.errors import InputError, nearest
-from tackbench.parts.entries import PartEntry, read_entries
+from tackbench.parts.entries import BOUNDS, PartEntry, read_entries
 from tackbench.parts.parameters import KIND_FAMILIES
 from tackbench.parts.places import PARTS_VARIABLE, models_root, user_parts_folder
 from tackbench.parts.tomlfile import read_toml
@@ -36,6 +37,26 @@ class PartsLibrary:
         if entry.kind != kind_key:
             raise where.fault(f"{entry.name} is of kind {entry.kind}, not {kind_key}", f"write {entry.kind} = …")
         return entry
+
+    def model(self, name: str, kind_key: str, where: Where | None = None) -> tuple[str, Mapping[str, Any], PartEntry]:
+        """What ``name`` stands for as a model: its right spelling, its parameters, its entry.
+
+        A name followed by ``low``, ``high`` or ``typical`` is that end (or the middle) of the entry's spread. Raises
+        InputError at ``where`` like ``find``, and for a bound that the entry does not have.
+        """
+        where = where or Where()
+        head, _, bound = name.strip().rpartition(" ")
+        entry = self.by_name.get(head.strip().casefold())
+        if bound.casefold() not in BOUNDS or entry is None or name.strip().casefold() in self.by_name:
+            found = self.find(name, kind_key, where)
+            return found.name, found.parameters, found
+        entry = self.find(head, kind_key, where)
+        parameters = entry.at_bound(bound.casefold())
+        if parameters is None:
+            raise where.fault(
+                f"{entry.name} has no {bound.casefold()} bound", f"write {entry.name}, its typical self"
+            )
+        return f"{entry.name} {bound.casefold()}".removesuffix(" typical"), parameters, entry
 
     def entries(self, kind: str | None = None) -> tuple[PartEntry, ...]:
         """Every entry once, in order of name; of one ``kind`` key when given."""

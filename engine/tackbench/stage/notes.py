@@ -20,7 +20,9 @@ def notes_of(variant: Variant) -> tuple[str, ...]:
     return (
         *_supply_notes(variant),
         *limit_notes(variant),
+        *_unrated_notes(variant),
         *_lone_diode_notes(variant),
+        *_device_notes(variant),
         *_source_notes(variant),
         *_file_notes(variant),
     )
@@ -32,9 +34,14 @@ def _supply_notes(variant: Variant) -> Iterator[str]:
         return
     chosen, own = format_quantity(variant.settings[SUPPLY], "V"), format_quantity(supply.volts, "V")
     yield f"{chosen} is above the stage's own {own}: your box may not be built for this; check every rating"
+
+
+def _unrated_notes(variant: Variant) -> Iterator[str]:
+    """Capacitors that certainly see volts and whose rating the file does not give."""
     bare = unrated(variant)
     if bare:
-        yield f"no rating given for {', '.join(bare)}, which {'sees' if len(bare) == 1 else 'see'} the raised supply"
+        sees = "which sees" if len(bare) == 1 else "which see"
+        yield f"no rating given for {', '.join(bare)}, {sees} the supply: look at the part itself"
 
 
 def _lone_diode_notes(variant: Variant) -> Iterator[str]:
@@ -64,6 +71,27 @@ def antiparallel_pairs(circuit: Circuit) -> list[tuple[Part, Part]]:
             pairs.extend((other, part) for other in seen.get((ends[1], ends[0]), ()) if ends[0] != ends[1])
             seen.setdefault(ends, []).append(part)
     return pairs
+
+
+def _device_notes(variant: Variant) -> Iterator[str]:
+    """What the real device does and its model does not, and what a type number alone cannot tell."""
+    for part in variant.circuit.parts:
+        if part.parameters.get("crossover_prone"):
+            yield (
+                f"{part.ref} ({part.model}): the real output stage crosses over audibly when it must sink and source "
+                "in turn; this is not modelled"
+            )
+        if part.kind == "mosfet" and part.pin("gate") == part.pin("drain"):
+            model = variant.parts[part.ref].model
+            entry = None if model is None else model.entry
+            if entry is not None and entry.low is not None and entry.high is not None:
+                least, most = (
+                    format_quantity(abs(bound["threshold_volts"]), "V") for bound in (entry.low, entry.high)
+                )
+                yield (
+                    f"{part.ref} serves as a diode: it clips at its threshold, anywhere from {least} to {most} in "
+                    "its type; measure yours"
+                )
 
 
 def _source_notes(variant: Variant) -> Iterator[str]:

@@ -18,7 +18,8 @@ LONGEST_STRING = 1000
 
 @dataclass(frozen=True)
 class Model:
-    """A device model: its library name (or "in place"), its complete parameters, its library entry if it has one."""
+    """A device model: its library name (with the bound of its spread, or "in place"), its complete parameters, its
+    library entry if it has one."""
 
     name: str
     parameters: Mapping[str, Any]
@@ -135,10 +136,9 @@ def _count_words(count: int) -> str:
 
 
 def read_model(kind_key: str, raw: Any, where: Where, library: PartsLibrary) -> Model:
-    """A device model: a library name, or a table of parameters in place."""
+    """A device model: a library name, alone or with a bound of its spread, or a table of parameters in place."""
     if isinstance(raw, str):
-        entry = library.find(raw, kind_key, where)
-        return Model(entry.name, entry.parameters, entry)
+        return Model(*library.model(raw, kind_key, where))
     if not isinstance(raw, Mapping):
         raise where.fault(
             f"{shown(raw)} is no model", "name a model of the parts library or write a table of parameters"

@@ -45,7 +45,7 @@ def check_taper(raw: object, where: Where) -> str:
 
 
 def check_no_taper_letter(raw: str, where: Where) -> None:
-    """Refuse a pot's resistance with a taper's letter at its front or end, as printed on pots: ``A500k``, ``500kA``."""
+    """Refuse a pot's resistance with a taper's letter at its front or end, as on pots: ``A500k``, ``500kA``."""
     text = raw.strip()
     for letter, rest in ((text[:1], text[1:]), (text[-1:], text[:-1])):
         if letter.upper() in _LETTERS and _is_resistance(rest):
