@@ -9,9 +9,8 @@ import click
 
 from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
-from tackbench.devices import FAMILIES
 from tackbench.errors import InputError, nearest
-from tackbench.parts import PartEntry, PartsLibrary, known_kinds, load_parts
+from tackbench.parts import KEYS, PartEntry, PartsLibrary, known_kinds, load_parts
 from tackbench.values import format_quantity
 
 FROM_MEMORY = "From memory in part or whole (see the source): treat those figures as a starting point"
@@ -78,7 +77,7 @@ def _parameters(entry: PartEntry) -> Iterator[str]:
     sets = [entry.parameters, *(bound for bound in (entry.low, entry.high) if bound is not None)]
     heads = ["typical", *(name for name, bound in (("low", entry.low), ("high", entry.high)) if bound is not None)]
     yield f"  {'':24}" + "".join(head.rjust(14) for head in heads)
-    for key in FAMILIES[entry.family]:
+    for key in KEYS[entry.family]:
         if any(key.name in values for values in sets):
             spelt = [_spelt(values, key.name, key.unit) for values in sets]
             yield f"  {key.name.replace('_', ' '):24}" + "".join(text.rjust(14) for text in spelt)

@@ -9,7 +9,7 @@ import click
 from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
 from tackbench.cli.words import part_words
-from tackbench.stage import Mod, Stage, load_stage, shipped_stages
+from tackbench.stage import SURROUNDINGS, Mod, Stage, free_surroundings, load_stage, shipped_stages
 from tackbench.values import format_position
 
 
@@ -19,7 +19,7 @@ def command(name: str | None) -> None:
     """List the stages that ship, or show one and its mods.
 
     What is shown is what --with and --try take: mods with their positions (the one as built is marked *), controls
-    with their travel in percent, the supply in volts, parts with their values.
+    with their travel in percent, the supply in volts, what feeds and plays it, parts with their values.
     """
     if name is None:
         for known in shipped_stages():
@@ -42,9 +42,21 @@ def _describe(stage: Stage) -> Iterator[str]:
         for control in stage.controls.values():
             yield f"  {control.name}  {control.label}, at {format_position(control.at)}"
     yield from _supply(stage)
+    yield from _around(stage)
     yield "\nParts as built"
     for ref, words in part_words(stage.variant().circuit):
         yield f"  {ref.ljust(5)} {words}"
+
+
+def _around(stage: Stage) -> Iterator[str]:
+    free = free_surroundings(stage)
+    if free:
+        yield "\nAround it"
+    size = max((len(name) for name in free), default=0)
+    for name in free:
+        item = SURROUNDINGS[name]
+        else_ = f" ({item.spell(item.default)} unless chosen)" if item.default is not None else ""
+        yield f"  {name.ljust(size)}  {item.about}{else_}"
 
 
 def _mod(mod: Mod) -> Iterator[str]:

@@ -163,7 +163,7 @@ def _conductance(elements: Elements, ref: str, a: int, b: int, siemens: float) -
 
 
 def _capacitance(elements: Elements, ref: str, a: int, b: int, farads: float) -> None:
-    if a != b and farads > 0:
+    if a != b and farads != 0.0:
         elements.capacitors.append(Branch(ref, a, b, farads))
 
 

@@ -7,8 +7,8 @@ from dataclasses import dataclass
 from types import MappingProxyType
 from typing import Any
 
-from tackbench.devices.schema import FAMILIES, fill_defaults
 from tackbench.errors import nearest
+from tackbench.parts.families import KEYS, complete
 from tackbench.parts.parameters import FAMILY_KINDS, check_whole, read_given, read_parameters
 from tackbench.parts.tomlfile import check_format
 from tackbench.values import Where, parse_quantity, shown
@@ -23,7 +23,7 @@ BOUNDS = ("low", "typical", "high")
 
 @dataclass(frozen=True)
 class PartEntry:
-    """A device type. ``parameters`` is its complete typical set at 25 degrees C, SI, in the keys of ``FAMILIES``;
+    """A device type. ``parameters`` is its complete typical set at 25 degrees C, SI, in the keys of its family;
     ``low`` and ``high`` are complete sets at the bounds of its spread, or None. ``points`` are (volts, amperes)
     that the parameters were fitted to, with the worst ``fit_error_millivolts``. ``own`` is True for a user's file.
     """
@@ -81,7 +81,7 @@ def read_entries(document: dict[str, Any], file: object, own: bool = False) -> I
 def read_entry(name: str, table: Mapping[str, Any], where: Where, own: bool = False) -> PartEntry:
     """One entry from its table; ``where`` names the file and the entry."""
     family, polarity = _family(table, where)
-    known = {key.name for key in FAMILIES[family]} | set(_TEXTS) | set(_OTHERS)
+    known = {key.name for key in KEYS[family]} | set(_TEXTS) | set(_OTHERS)
     for key in table:
         if key not in known:
             raise where.at(key=key).fault(f"{shown(key)} is no key of a {family} entry", nearest(key, known))
@@ -110,9 +110,9 @@ def read_entry(name: str, table: Mapping[str, Any], where: Where, own: bool = Fa
 
 def _family(table: Mapping[str, Any], where: Where) -> tuple[str, str]:
     family, polarity = table.get("family"), table.get("polarity", "")
-    if not isinstance(family, str) or family not in FAMILIES:
+    if not isinstance(family, str) or family not in KEYS:
         found = "the family is missing" if family is None else f"{shown(family)} is no known family"
-        hint = nearest(family, FAMILIES) if isinstance(family, str) else f"known: {', '.join(FAMILIES)}"
+        hint = nearest(family, KEYS) if isinstance(family, str) else f"known: {', '.join(KEYS)}"
         raise where.at(key="family").fault(found, hint)
     allowed = [p for f, p in FAMILY_KINDS if f == family]
     if polarity not in allowed:
@@ -134,7 +134,7 @@ def _spread(
     about = _text(overrides, "about", here)
     inner = Where(where.file, f"{where.part} {bound}")
     changed = {key: value for key, value in overrides.items() if key != "about"}
-    filled = fill_defaults(family, read_given(family, {**given, **changed}, inner))
+    filled = complete(family, read_given(family, {**given, **changed}, inner))
     check_whole(family, polarity, filled, inner)
     return MappingProxyType(filled), about
 

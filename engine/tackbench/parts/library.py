@@ -122,5 +122,5 @@ def _add_files(by_name: dict[str, PartEntry], files: Iterable[Traversable], own:
 
 
 def known_kinds() -> tuple[str, ...]:
-    """The kind keys that take a model from the library."""
+    """The kinds of entry that the library may hold."""
     return tuple(KIND_FAMILIES)

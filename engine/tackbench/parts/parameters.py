@@ -6,8 +6,9 @@ from collections.abc import Mapping
 from types import MappingProxyType
 from typing import Any
 
-from tackbench.devices.schema import FAMILIES, MATERIALS, Key, fill_defaults
+from tackbench.devices.schema import MATERIALS, Key
 from tackbench.errors import nearest
+from tackbench.parts.families import KEYS, complete
 from tackbench.values import Where, parse_quantity, shown
 
 KIND_FAMILIES: Mapping[str, tuple[str, str]] = MappingProxyType(
@@ -20,9 +21,11 @@ KIND_FAMILIES: Mapping[str, tuple[str, str]] = MappingProxyType(
         "p-jfet": ("jfet", "p"),
         "n-mosfet": ("mosfet", "n"),
         "p-mosfet": ("mosfet", "p"),
+        "battery": ("battery", ""),
+        "pickup": ("pickup", ""),
     }
 )
-"""Family and polarity of each kind key of the stage file that takes a model."""
+"""Family and polarity of each kind of entry: the kind keys of the stage file that take a model, and the sources."""
 
 FAMILY_KINDS = {pair: kind for kind, pair in KIND_FAMILIES.items()}
 
@@ -33,14 +36,14 @@ def read_parameters(family: str, polarity: str, table: Mapping[str, Any], where:
     Raises InputError at ``where`` (with the key) for an unknown, missing or unreadable parameter, a pinch-off
     voltage of the wrong sign, half a breakdown, or an LED without its band gap.
     """
-    filled = fill_defaults(family, read_given(family, table, where))
+    filled = complete(family, read_given(family, table, where))
     check_whole(family, polarity, filled, where)
     return MappingProxyType(filled)
 
 
 def read_given(family: str, table: Mapping[str, Any], where: Where) -> dict[str, Any]:
     """The parameters that ``table`` gives, each read and checked alone."""
-    keys = {key.name: key for key in FAMILIES[family]}
+    keys = {key.name: key for key in KEYS[family]}
     for name in table:
         if name not in keys:
             raise where.at(key=name).fault(f"{shown(name)} is no parameter of this model", nearest(name, keys))
@@ -62,7 +65,7 @@ def _read_one(key: Key, raw: Any, where: Where) -> Any:
 
 def check_whole(family: str, polarity: str, filled: Mapping[str, Any], where: Where) -> None:
     """Refuse a parameter set that is incomplete or contradicts itself or its polarity."""
-    for key in FAMILIES[family]:
+    for key in KEYS[family]:
         if key.required and key.name not in filled:
             raise where.at(key=key.name).fault("this parameter is missing", f"give {key.name}, {key.rule_text()}")
     if "material" in filled and "band_gap" not in filled:

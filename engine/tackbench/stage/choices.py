@@ -10,6 +10,7 @@ from tackbench.stage.edits import edited
 from tackbench.stage.model import SUPPLY, TEMPERATURE, Stage
 from tackbench.stage.spec import PartSpec
 from tackbench.stage.supply import signed_volts
+from tackbench.stage.surroundings import SURROUNDINGS, free_surroundings
 from tackbench.values import Where, parse_position, parse_quantity, shown
 
 COLDEST_CELSIUS, HOTTEST_CELSIUS = -55.0, 125.0
@@ -52,6 +53,8 @@ def normal(stage: Stage, name: str, raw: Any) -> object:
     known = stage.known_parts()
     if name in known:
         return _part_choice(stage, known[name], raw, where)
+    if name in free_surroundings(stage):
+        return SURROUNDINGS[name].read(stage, raw, where)
     raise _where(stage, None).fault(
         f"{shown(name)} is no mod, control or part of this stage", nearest(name, _names(stage, known))
     )
@@ -59,7 +62,7 @@ def normal(stage: Stage, name: str, raw: Any) -> object:
 
 def _names(stage: Stage, parts: Iterable[str]) -> list[str]:
     supply = [SUPPLY] if stage.supply is not None else []
-    return [*stage.mods, *stage.controls, *supply, TEMPERATURE, *parts]
+    return [*stage.mods, *stage.controls, *supply, TEMPERATURE, *parts, *free_surroundings(stage)]
 
 
 def _where(stage: Stage, name: str | None) -> Where:

@@ -21,13 +21,16 @@ def flatten(
     controls: Mapping[str, float],
     volts: float | None,
     celsius: float,
+    supply_ohms: float | None = None,
 ) -> Circuit:
-    """The circuit of ``parts`` and wires with the controls at ``controls``, the supply at ``volts``."""
+    """The circuit of ``parts`` and wires with the controls at ``controls``, the supply at ``volts`` behind
+    ``supply_ohms`` (None: the stage's own)."""
     flat = [item for part in parts for item in _flat_parts(part, controls)]
     flat.extend(Part(f"link {a}-{b}", "wire", (a, b)) for a, b in links)
     supply = None
     if stage.supply is not None and volts is not None:
-        supply = Supply(stage.supply.node, volts, stage.supply.ohms, stage.supply.rails)
+        ohms = stage.supply.ohms if supply_ohms is None else supply_ohms
+        supply = Supply(stage.supply.node, volts, ohms, stage.supply.rails)
     return Circuit(
         title=stage.title,
         parts=tuple(flat),

@@ -9,6 +9,7 @@ from tackbench.circuit import Circuit, Part
 from tackbench.circuit.graph import Groups, is_short
 from tackbench.stage.limits import limit_notes, unrated
 from tackbench.stage.model import SUPPLY
+from tackbench.stage.surroundings import BATTERY, battery_count, battery_ohms, entries_around, guitar_of
 from tackbench.values import format_quantity
 
 if TYPE_CHECKING:
@@ -24,13 +25,18 @@ def notes_of(variant: Variant) -> tuple[str, ...]:
         *_lone_diode_notes(variant),
         *_device_notes(variant),
         *_source_notes(variant),
+        *_around_notes(variant),
         *_file_notes(variant),
     )
 
 
 def _supply_notes(variant: Variant) -> Iterator[str]:
     supply = variant.stage.supply
-    if supply is None or abs(variant.settings[SUPPLY]) <= abs(supply.volts):
+    if (
+        supply is None
+        or battery_ohms(variant.stage, variant.settings) is not None
+        or abs(variant.settings[SUPPLY]) <= abs(supply.volts)
+    ):
         return
     chosen, own = format_quantity(variant.settings[SUPPLY], "V"), format_quantity(supply.volts, "V")
     yield f"{chosen} is above the stage's own {own}: your box may not be built for this; check every rating"
@@ -108,6 +114,27 @@ def _source_notes(variant: Variant) -> Iterator[str]:
         yield f"figures of {name} ({', '.join(refs)}) are from memory, in part or whole: check a data sheet"
     for words, refs in own.items():
         yield f"{', '.join(refs)}: {words}"
+
+
+def _around_notes(variant: Variant) -> Iterator[str]:
+    """What the battery and the guitar are, and where their figures come from."""
+    stage, settings = variant.stage, variant.settings
+    ohms = battery_ohms(stage, settings)
+    if ohms is not None:
+        count = battery_count(stage, settings[BATTERY])
+        several = f"{count} in series, " if count > 1 else ""
+        volts = format_quantity(settings[SUPPLY], "V")
+        yield f"battery {settings[BATTERY]}: {several}{volts} without load behind {format_quantity(ohms, 'ohm')}"
+    if guitar_of(stage, settings) is not None and stage.input.ohms:
+        yield (
+            f"the pickup takes the place of the {format_quantity(stage.input.ohms, 'ohm')} in series with the input, "
+            "which stand for a guitar"
+        )
+    for name, entry in entries_around(stage, settings).items():
+        if entry.from_memory:
+            yield f"figures of {name} are from memory, in part or whole: measure yours"
+        if entry.own:
+            yield f"{name} is your own ({entry.file})"
 
 
 def _file_notes(variant: Variant) -> Iterator[str]:

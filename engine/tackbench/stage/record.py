@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from tackbench.circuit import Circuit, Part
+from tackbench.stage.surroundings import entries_around
 
 if TYPE_CHECKING:
     from tackbench.stage.variant import Variant
@@ -62,4 +63,6 @@ def _provenance(variant: Variant) -> dict[str, Any]:
     for part in variant.parts.values():
         if part.model is not None and part.model.entry is not None:
             found[part.model.name] = part.model.entry.provenance()
+    for name, entry in entries_around(variant.stage, variant.settings).items():
+        found[name] = entry.provenance()
     return found

@@ -11,10 +11,12 @@ from typing import Any
 from tackbench.circuit import Circuit
 from tackbench.circuit.checks import first_fault
 from tackbench.stage.choices import choice_of, normalised
+from tackbench.stage.guitar import with_guitar
 from tackbench.stage.model import ROOM_CELSIUS, SUPPLY, TEMPERATURE, Stage
 from tackbench.stage.netlist import flatten
 from tackbench.stage.resolve import Bench, resolve
 from tackbench.stage.spec import PartSpec
+from tackbench.stage.surroundings import battery_ohms, guitar_of, surrounding_settings
 from tackbench.values import Where
 
 
@@ -23,8 +25,8 @@ class Variant:
     """A variant of ``stage``.
 
     ``choices`` are only what was chosen, in normal form and order; ``settings`` every mod's position, every
-    control (0 to 1), the supply (volts, when there is one) and the temperature (degrees Celsius); ``parts`` the
-    parts as they stand, by designator; ``circuit`` the flat netlist.
+    control (0 to 1), the supply (volts, when there is one), the temperature (degrees Celsius) and, when chosen, the
+    battery and the guitar; ``parts`` the stage's parts as they stand, by designator; ``circuit`` the flat netlist.
     """
 
     stage: Stage
@@ -73,7 +75,11 @@ def make_variant(stage: Stage, choices: Mapping[str, object]) -> Variant:
         {name: settings[name] for name in stage.controls},
         settings.get(SUPPLY),
         settings[TEMPERATURE],
+        battery_ohms(stage, settings),
     )
+    guitar = guitar_of(stage, settings)
+    if guitar is not None:
+        circuit = with_guitar(circuit, guitar)
     _check(stage, circuit, bench)
     return Variant(
         stage, MappingProxyType(chosen), MappingProxyType(settings), MappingProxyType(bench.parts), circuit
@@ -86,7 +92,7 @@ def _settings(stage: Stage, chosen: Mapping[str, Any]) -> dict[str, Any]:
     if stage.supply is not None:
         settings[SUPPLY] = chosen.get(SUPPLY, stage.supply.volts)
     settings[TEMPERATURE] = chosen.get(TEMPERATURE, ROOM_CELSIUS)
-    return settings
+    return {**settings, **surrounding_settings(stage, chosen)}
 
 
 def _choose_parts(bench: Bench, chosen: dict[str, object], raw: Mapping[str, object]) -> None:

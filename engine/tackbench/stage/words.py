@@ -6,6 +6,7 @@ from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
 from tackbench.stage.model import SUPPLY, TEMPERATURE
+from tackbench.stage.surroundings import BATTERY, PICKUP, SURROUNDINGS, free_surroundings
 from tackbench.values import format_position, format_quantity
 
 if TYPE_CHECKING:
@@ -24,8 +25,10 @@ def difference_words(variant: Variant, reference: Variant) -> str:
 
 def _setting_words(variant: Variant, reference: Variant) -> Iterable[str]:
     stage = variant.stage
+    around = set(free_surroundings(stage))
+    fed = BATTERY in around and BATTERY in variant.settings
     for name, value in variant.settings.items():
-        if value == reference.settings.get(name):
+        if value == reference.settings.get(name, SURROUNDINGS[name].default if name in around else None):
             continue
         if name in stage.mods:
             mod = stage.mods[name]
@@ -33,9 +36,13 @@ def _setting_words(variant: Variant, reference: Variant) -> Iterable[str]:
         elif name in stage.controls:
             yield f"{stage.controls[name].label} {format_position(value)}"
         elif name == SUPPLY:
-            yield format_quantity(value, "V")
+            yield from () if fed else (format_quantity(value, "V"),)
         elif name == TEMPERATURE:
             yield format_quantity(value, "celsius")
+        elif name in around:
+            yield f"{SURROUNDINGS[name].label} {SURROUNDINGS[name].spell(value)}"
+    if PICKUP in around and PICKUP in reference.settings and PICKUP not in variant.settings:
+        yield "no pickup"
 
 
 def _part_words(variant: Variant, reference: Variant) -> Iterable[str]:
