@@ -88,6 +88,14 @@ def test_no_lane_depends_on_its_company(quality: str) -> None:
         assert_array_equal(together, single)
 
 
+@pytest.mark.parametrize("name", shipped_stages())
+def test_every_stage_is_the_same_alone_and_in_lanes(name: str) -> None:
+    circuits = [circuit(name, temperature=celsius) for celsius in (10.0, 25.0, 40.0)]
+    volts = guitar(300, 1.0)
+    for one, together in zip(circuits, through(circuits, volts, "standard"), strict=True):
+        assert_array_equal(together, through([one], volts, "standard")[0])
+
+
 def test_hard_lanes_do_not_disturb_the_others() -> None:
     volts = 300 * np.sign(np.sin(2 * np.pi * 500 * np.arange(300) / RATE))[:, None]
     circuits = [circuit("fuzz-silicon", **choice) for choice in ({}, {"supply": 18.0}, {"temperature": 50.0})]
