@@ -123,15 +123,15 @@ def test_loading_darkens_and_the_volume_knob_cleans_a_fuzz() -> None:
     """What players know (common practice, no source): a low input takes the top off, and the knob brings down the
     drive."""
     stage = load_stage("fuzz-germanium")
-    full = np.abs(response(stage.variant(pickup="humbucker").circuit, [300.0]))[0]
-    down = np.abs(response(stage.variant({"pickup": "humbucker", "guitar-volume": 0.5}).circuit, [300.0]))[0]
+    full = np.abs(response(stage.variant(guitar="humbucker").circuit, [300.0]))[0]
+    down = np.abs(response(stage.variant({"guitar": "humbucker", "guitar-volume": 0.5}).circuit, [300.0]))[0]
     assert down < 0.5 * full
 
 
 @pytest.mark.parametrize("volume", [1.0, 0.7, 0.0])
 def test_the_guitar_does_not_make_the_steps_small(volume: float) -> None:
     """Its fast poles (a pot's end into the cable) must not drive the step control."""
-    choices = {"pickup": "humbucker", "guitar-volume": volume, "guitar-tone": 0.5}
+    choices = {"guitar": "humbucker", "guitar-volume": volume, "guitar-tone": 0.5}
     stream = prepare(load_stage("flat-boost").variant(choices).circuit, 48_000).stream(1)
     times = np.arange(4_800) / 48_000.0
     stream.process(0.3 * np.sin(2 * np.pi * 440.0 * times)[:, None])
@@ -145,29 +145,29 @@ def test_the_guitar_does_not_make_the_steps_small(volume: float) -> None:
 
 def test_choices_words_and_record() -> None:
     stage = load_stage("fuzz-silicon")
-    variant = stage.variant({"pickup": "double coil", "guitar-volume": "70%", "cable": "1n"})
-    assert variant.words() == "pickup humbucker, guitar volume 70 %, cable 1 nF"
+    variant = stage.variant({"guitar": "double coil", "guitar-volume": "70%", "cable": "1n"})
+    assert variant.words() == "guitar with humbucker, guitar volume 70 %, cable 1 nF"
     assert variant.settings["recorded-into"] == 1e6
     assert variant.circuit.input_ohms == 0.0
     assert "humbucker" in variant.record()["provenance"]
-    assert stage.variant().words(variant) == "no pickup"
+    assert stage.variant().words(variant) == "no guitar in the circuit"
     notes = " ".join(variant.notes)
-    assert "the pickup takes the place of the 10 kΩ in series with the input" in notes
+    assert "the guitar takes the place of the 10 kΩ in series with the input" in notes
     assert "figures of humbucker are from memory" in notes
-    assert stage.variant({"pickup": "humbucker high"}).circuit != stage.variant({"pickup": "humbucker"}).circuit
+    assert stage.variant({"guitar": "humbucker high"}).circuit != stage.variant({"guitar": "humbucker"}).circuit
 
 
 @pytest.mark.parametrize(
     ("choices", "sentence"),
     [
-        ({"guitar-volume": 0.5}, "guitar-volume: no pickup is chosen, so the guitar is not in the circuit"),
-        ({"pickup": "humbuker"}, "no pickup 'humbuker'; did you mean 'humbucker'"),
-        ({"pickup": "1N4148"}, "1N4148 is of kind diode, not pickup"),
-        ({"pickup": 3}, "3 names nothing in the parts library; write a pickup's name"),
-        ({"pickup": "humbucker", "cable": "0"}, "cable: '0' is not allowed; expected farads above zero"),
-        ({"pickup": "humbucker", "cable": "5 m"}, "cable: '5 m' is no cable's capacitance; write farads"),
-        ({"pickup": "humbucker", "guitar-tone": 2}, "guitar-tone: 2 is outside 0 to 1"),
-        ({"pickup": "humbucker", "recorded-into": "1 nF"}, "recorded-into: '1 nF' is in farads"),
+        ({"guitar-volume": 0.5}, "guitar-volume: no guitar stands in the circuit"),
+        ({"guitar": "humbuker"}, "no pickup 'humbuker'; did you mean 'humbucker'"),
+        ({"guitar": "1N4148"}, "1N4148 is of kind diode, not pickup"),
+        ({"guitar": 3}, "3 names nothing in the parts library; write a pickup's name"),
+        ({"guitar": "humbucker", "cable": "0"}, "cable: '0' is not allowed; expected farads above zero"),
+        ({"guitar": "humbucker", "cable": "5 m"}, "cable: '5 m' is no cable's capacitance; write farads"),
+        ({"guitar": "humbucker", "guitar-tone": 2}, "guitar-tone: 2 is outside 0 to 1"),
+        ({"guitar": "humbucker", "recorded-into": "1 nF"}, "recorded-into: '1 nF' is in farads"),
         ({"guitar-volum": 0.5}, "did you mean 'guitar-volume'"),
     ],
     ids=str,
@@ -202,11 +202,11 @@ def test_a_stages_own_names_come_first(tmp_path: Path) -> None:
     stage = load_stage(path)
     assert stage.variant(battery="no").settings["battery"] == "no"
     assert stage.variant(cable="2k").parts["cable"].value == 2e3
-    variant = stage.variant(pickup="single coil", battery="no", cable="2k")
+    variant = stage.variant(guitar="single coil", battery="no", cable="2k")
     assert len(set(variant.circuit.nodes())) == 6
     assert {"take'", "pickup", "take"} < set(variant.circuit.nodes())
     assert math.isfinite(abs(response(variant.circuit, [1e3])[0]))
-    assert variant.words() == "battery no, pickup single coil, cable 1 kΩ → 2 kΩ"
-    path.write_text(OWN.replace("mods.battery", "mods.pickup"), encoding="utf-8")
+    assert variant.words() == "battery no, guitar with single coil, cable 1 kΩ → 2 kΩ"
+    path.write_text(OWN.replace("mods.battery", "mods.guitar"), encoding="utf-8")
     with pytest.raises(InputError, match="'guitar-tone' is no mod, control or part of this stage"):
         load_stage(path).variant({"guitar-tone": 0.5})

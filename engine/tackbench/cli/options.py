@@ -47,7 +47,7 @@ with_option = click.option(
     metavar="KEY=VALUE",
     help="Set one thing: a mod (clip=silicon), a control (gain=0.5, 70% or 7/10 of its travel), supply=24 (volts), "
     "temperature=10 (degrees Celsius), a part's value or model (C1=22n, D1=1N4148), several parts at once "
-    "(D1+D2=1N4148), what feeds it (battery=tired) or plays it (pickup=humbucker). May be repeated.",
+    "(D1+D2=1N4148), what feeds it (battery=tired) or plays it (guitar=humbucker). May be repeated.",
 )
 
 quality_option = click.option(

@@ -127,8 +127,8 @@ def _around_notes(variant: Variant) -> Iterator[str]:
         yield f"battery {settings[BATTERY]}: {several}{volts} without load behind {format_quantity(ohms, 'ohm')}"
     if guitar_of(stage, settings) is not None and stage.input.ohms:
         yield (
-            f"the pickup takes the place of the {format_quantity(stage.input.ohms, 'ohm')} in series with the input, "
-            "which stand for a guitar"
+            f"the guitar takes the place of the {format_quantity(stage.input.ohms, 'ohm')} in series with the input, "
+            "which stand for one"
         )
     for name, entry in entries_around(stage, settings).items():
         if entry.from_memory:

@@ -19,7 +19,9 @@ from tackbench.values import Where, format_position, format_quantity, parse_posi
 if TYPE_CHECKING:
     from tackbench.stage.model import Stage
 
-BATTERY, PICKUP = "battery", "pickup"
+BATTERY, GUITAR = "battery", "guitar"
+KINDS_AROUND = {BATTERY: "battery", GUITAR: "pickup"}
+"""The kind of library entry that each of them names."""
 NOMINAL_SLACK = 0.02
 """A supply within this share of a whole number of batteries counts as that many."""
 MOST_CABLE_FARADS = 100e-9
@@ -28,7 +30,7 @@ MOST_CABLE_FARADS = 100e-9
 
 @dataclass(frozen=True)
 class Surrounding:
-    """One such name. ``default`` holds when the pickup is chosen and this is not; ``spell`` writes a value."""
+    """One such name. ``default`` holds when the guitar is chosen and this is not; ``spell`` writes a value."""
 
     name: str
     label: str
@@ -40,8 +42,10 @@ class Surrounding:
         """The choice in its normal form: a library name, a position, or a quantity in base units."""
         if self.unit == "entry":
             if not isinstance(raw, str):
-                raise where.fault(f"{shown(raw)} names nothing in the parts library", f"write a {self.name}'s name")
-            return stage.library.model(raw, self.name, where)[0]
+                raise where.fault(
+                    f"{shown(raw)} names nothing in the parts library", f"write a {KINDS_AROUND[self.name]}'s name"
+                )
+            return stage.library.model(raw, KINDS_AROUND[self.name], where)[0]
         if self.unit == "position":
             return parse_position(raw, where)
         value = parse_quantity(raw, self.unit, ">0", where)
@@ -64,7 +68,7 @@ SURROUNDINGS: Mapping[str, Surrounding] = MappingProxyType(
             Surrounding(
                 BATTERY, "battery", "entry", None, "the battery or adapter that feeds it: tackbench parts battery"
             ),
-            Surrounding(PICKUP, "pickup", "entry", None, "the pickup that plays it: tackbench parts pickup"),
+            Surrounding(GUITAR, "guitar with", "entry", None, "the pickup that plays it: tackbench parts pickup"),
             Surrounding(
                 "guitar-volume", "guitar volume", "position", 1.0, "the volume knob of the guitar with that pickup"
             ),
@@ -85,10 +89,10 @@ GUITAR_NAMES = tuple(name for name in SURROUNDINGS if name != BATTERY)
 
 def free_surroundings(stage: Stage) -> tuple[str, ...]:
     """The names that this stage leaves free and that make sense for it: without a supply there is no battery, and
-    where ``pickup`` means something of the stage's own there is no guitar."""
+    where ``guitar`` means something of the stage's own there is no guitar."""
     own = {*stage.mods, *stage.controls, *stage.known_parts()}
     absent = {BATTERY} if stage.supply is None else set()
-    if PICKUP in own:
+    if GUITAR in own:
         absent |= set(GUITAR_NAMES)
     return tuple(name for name in SURROUNDINGS if name not in own | absent)
 
@@ -97,7 +101,7 @@ def surrounding_settings(stage: Stage, chosen: Mapping[str, Any]) -> dict[str, A
     """The settings that the choices of these names make: the battery and the volts it gives, the whole guitar.
 
     Raises InputError for a battery beside a chosen supply, a battery that cannot make the stage's voltage, and a
-    guitar's knob or cable without a pickup.
+    guitar's knob or cable without a guitar.
     """
     free = free_surroundings(stage)
     settings: dict[str, Any] = {}
@@ -105,12 +109,12 @@ def surrounding_settings(stage: Stage, chosen: Mapping[str, Any]) -> dict[str, A
         settings[BATTERY] = chosen[BATTERY]
         settings[SUPPLY] = _battery_volts(stage, chosen)
     asked = [name for name in GUITAR_NAMES if name in free and name in chosen]
-    if PICKUP in asked:
+    if GUITAR in asked:
         names = (name for name in GUITAR_NAMES if name in free)
         settings |= {name: chosen.get(name, SURROUNDINGS[name].default) for name in names}
     elif asked:
         raise Where(stage.name, asked[0]).fault(
-            "no pickup is chosen, so the guitar is not in the circuit", "choose one too, for example pickup=humbucker"
+            "no guitar stands in the circuit", "choose one too, for example guitar=humbucker"
         )
     return settings
 
@@ -154,14 +158,14 @@ def battery_ohms(stage: Stage, settings: Mapping[str, Any]) -> float | None:
 def guitar_of(stage: Stage, settings: Mapping[str, Any]) -> Guitar | None:
     """The guitar that stands in the circuit; None when no pickup is chosen."""
     free = free_surroundings(stage)
-    if PICKUP not in settings or PICKUP not in free:
+    if GUITAR not in settings or GUITAR not in free:
         return None
 
     def of(name: str) -> Any:
         return settings[name] if name in free else SURROUNDINGS[name].default
 
     return Guitar(
-        pickup=stage.library.model(settings[PICKUP], PICKUP)[1],
+        pickup=stage.library.model(settings[GUITAR], KINDS_AROUND[GUITAR])[1],
         volume=of("guitar-volume"),
         tone=of("guitar-tone"),
         cable=of("cable"),
@@ -173,5 +177,5 @@ def guitar_of(stage: Stage, settings: Mapping[str, Any]) -> Guitar | None:
 def entries_around(stage: Stage, settings: Mapping[str, Any]) -> dict[str, PartEntry]:
     """The library entries of the chosen battery and pickup, by the name chosen."""
     free = free_surroundings(stage)
-    chosen = [name for name in (BATTERY, PICKUP) if name in settings and name in free]
-    return {settings[name]: stage.library.model(settings[name], name)[2] for name in chosen}
+    chosen = [name for name in (BATTERY, GUITAR) if name in settings and name in free]
+    return {settings[name]: stage.library.model(settings[name], KINDS_AROUND[name])[2] for name in chosen}

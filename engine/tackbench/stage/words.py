@@ -6,7 +6,7 @@ from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
 from tackbench.stage.model import SUPPLY, TEMPERATURE
-from tackbench.stage.surroundings import BATTERY, PICKUP, SURROUNDINGS, free_surroundings
+from tackbench.stage.surroundings import BATTERY, GUITAR, SURROUNDINGS, free_surroundings
 from tackbench.values import format_position, format_quantity
 
 if TYPE_CHECKING:
@@ -41,8 +41,8 @@ def _setting_words(variant: Variant, reference: Variant) -> Iterable[str]:
             yield format_quantity(value, "celsius")
         elif name in around:
             yield f"{SURROUNDINGS[name].label} {SURROUNDINGS[name].spell(value)}"
-    if PICKUP in around and PICKUP in reference.settings and PICKUP not in variant.settings:
-        yield "no pickup"
+    if GUITAR in around and GUITAR in reference.settings and GUITAR not in variant.settings:
+        yield "no guitar in the circuit"
 
 
 def _part_words(variant: Variant, reference: Variant) -> Iterable[str]:
