@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 from collections.abc import Callable, Iterable
+from pathlib import Path
 from typing import TYPE_CHECKING, Any, TypeVar
 
 import click
@@ -32,12 +33,33 @@ def _stack(*options: Callable[[Any], Any]) -> Callable[[Decorated], Decorated]:
 
 take_argument = click.argument("take", metavar="TAKE")
 
-stage_option = click.option(
-    "--stage",
-    default=DEFAULT_STAGE,
-    show_default=True,
-    metavar="NAME|FILE",
-    help="The stage: the name of one that ships (see `tackbench stages`), or a stage file ending in .toml.",
+
+def _use_parts(context: click.Context, parameter: click.Parameter, folder: str | None) -> None:
+    """Let the command's library hold the part files of the folder, until the command ends."""
+    from tackbench.parts.places import PARTS_FOLDER
+
+    token = PARTS_FOLDER.set(None if folder is None else Path(folder))
+    context.call_on_close(lambda: PARTS_FOLDER.reset(token))
+
+
+parts_option = click.option(
+    "--parts",
+    metavar="FOLDER",
+    callback=_use_parts,
+    expose_value=False,
+    help="A folder of your own part files. Without it the environment variable TACKBENCH_PARTS names one, and a "
+    "folder called parts beside a stage file is read too.",
+)
+
+stage_option = _stack(
+    click.option(
+        "--stage",
+        default=DEFAULT_STAGE,
+        show_default=True,
+        metavar="NAME|FILE",
+        help="The stage: the name of one that ships (see `tackbench stages`), or a stage file ending in .toml.",
+    ),
+    parts_option,
 )
 
 with_option = click.option(

@@ -7,6 +7,7 @@ from typing import Any
 
 import click
 
+from tackbench.cli.options import parts_option
 from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
 from tackbench.errors import InputError, nearest
@@ -18,6 +19,7 @@ FROM_MEMORY = "From memory in part or whole (see the source): treat those figure
 
 @click.command("parts")
 @click.argument("what", required=False, metavar="[KIND|NAME]")
+@parts_option
 def command(what: str | None) -> None:
     """List the parts library, or show a part with its sources.
 

@@ -16,6 +16,11 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "check": ("tackbench.cli.check", "Say whether a stage is sound: voltages, current, gain."),
     "stages": ("tackbench.cli.stages", "List the stages that ship, or show one and its mods."),
     "parts": ("tackbench.cli.parts", "List the parts library, or show a part with its sources."),
+    "new": ("tackbench.cli.new", "Write a commented stage file to start from."),
+    "diode-from-meter": ("tackbench.cli.diode_from_meter", "Make a diode's model from your meter readings."),
+    "transistor-from-meter": ("tackbench.cli.transistor_from_meter", "Make a transistor's model from two readings."),
+    "jfet-from-meter": ("tackbench.cli.jfet_from_meter", "Make a JFET's model from two readings."),
+    "mosfet-from-meter": ("tackbench.cli.mosfet_from_meter", "Make a MOSFET's model from one reading."),
 }
 """Command name: the module that holds it as ``command``, and its short help."""
 

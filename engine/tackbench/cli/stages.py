@@ -6,6 +6,7 @@ from collections.abc import Iterator
 
 import click
 
+from tackbench.cli.options import parts_option
 from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
 from tackbench.cli.words import part_words
@@ -15,6 +16,7 @@ from tackbench.values import format_position
 
 @click.command("stages")
 @click.argument("name", required=False, metavar="[NAME|FILE]")
+@parts_option
 def command(name: str | None) -> None:
     """List the stages that ship, or show one and its mods.
 

@@ -13,7 +13,7 @@ from typing import Any
 from tackbench.errors import InputError, nearest
 from tackbench.parts.entries import BOUNDS, PartEntry, read_entries
 from tackbench.parts.parameters import KIND_FAMILIES
-from tackbench.parts.places import PARTS_VARIABLE, models_root, user_parts_folder
+from tackbench.parts.places import PARTS_FOLDER, PARTS_VARIABLE, models_root, user_parts_folder
 from tackbench.parts.tomlfile import read_toml
 from tackbench.values import Where
 
@@ -65,7 +65,8 @@ class PartsLibrary:
 
 
 def load_parts(extra_folder: Path | str | None = None, neighbour: Path | None = None) -> PartsLibrary:
-    """The shipped library, then the folder of the environment variable, then ``neighbour``, then ``extra_folder``.
+    """The shipped library, then the folder of the environment variable, then ``neighbour``, then ``extra_folder`` (or
+    the folder that the command line names).
 
     ``neighbour`` is the folder ``parts`` beside a stage file and may be absent; the others must exist when
     named. An entry replaces one of the same name from an earlier folder. Raises InputError naming the file.
@@ -76,8 +77,9 @@ def load_parts(extra_folder: Path | str | None = None, neighbour: Path | None = 
         _add_folder(by_name, named, f"the environment variable {PARTS_VARIABLE}")
     if neighbour is not None and os.path.isdir(neighbour):
         _add_folder(by_name, neighbour, "the stage file's neighbour")
-    if extra_folder is not None:
-        _add_folder(by_name, Path(extra_folder), "the parts folder option")
+    asked = extra_folder if extra_folder is not None else PARTS_FOLDER.get()
+    if asked is not None:
+        _add_folder(by_name, Path(asked), "the parts folder option")
     return PartsLibrary(by_name)
 
 

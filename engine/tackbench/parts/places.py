@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+from contextvars import ContextVar
 from importlib import resources
 from importlib.resources.abc import Traversable
 from pathlib import Path
@@ -22,6 +23,10 @@ def models_root() -> Traversable:
     if checkout.is_dir() and (checkout.parent / "pyproject.toml").is_file():
         return checkout
     raise WorkError(f"the shipped stages and parts were found neither at {shipped} nor at {checkout}; install again")
+
+
+PARTS_FOLDER: ContextVar[Path | None] = ContextVar("parts folder", default=None)
+"""The folder of the user's own part files that the command line's option names, while that command runs."""
 
 
 def user_parts_folder() -> Path | None:
