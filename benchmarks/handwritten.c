@@ -115,12 +115,16 @@ static inline int solve(double a[K][K], double *b)
     return 1;
 }
 
-/* Crosses `steps` steps of h seconds; u and du (per step of h) at 0 ... steps; out: the output after each step.
+/* Crosses `steps` steps of h seconds; u and du (per step of h) at 0 ... steps; out: the output's mean over
+ * each step, of the cubic through values and slopes.
  * z (X, c, j), c_slope and c_bend are the condition; returns the Newton iterations, negative when one fails. */
 int64_t handwritten(const Circuit *p, const double *u, const double *du, double h, int64_t steps, double *z,
                     double *c_slope, double *c_bend, double *out)
 {
     int64_t iterations = 0;
+    double y_before = p->out_u[0] * u[0] + p->out_u[1], d_before = p->out_u[0] * du[0];
+    for (int k = 0; k < Z; k++)
+        y_before += p->out[k] * z[k];
     for (int64_t at = 0; at < steps; at++) {
         double target[ROWS(N + K)], j[M], g[M][2], c[K];
         for (int row = 0; row < ROWS(N + K); row++)
@@ -196,10 +200,19 @@ int64_t handwritten(const Circuit *p, const double *u, const double *du, double 
             c_bend[k] = 0.5 * (now - c_slope[k]) / h;
             c_slope[k] = now;
         }
-        double y = p->out_u[0] * u[at + 1] + p->out_u[1];
+        double change[M] = {g[0][0] * c_slope[0] + g[0][1] * c_slope[1], g[1][0] * c_slope[2], g[2][0] * c_slope[3]};
+        double y = p->out_u[0] * u[at + 1] + p->out_u[1], d = p->out_u[0] * du[at + 1];
         for (int k = 0; k < Z; k++)
             y += p->out[k] * z[k];
-        out[at] = y;
+        for (int k = 0; k < N; k++)
+            d += h * p->out[k] * slope[k];
+        for (int k = 0; k < K; k++)
+            d += h * p->out[N + k] * c_slope[k];
+        for (int k = 0; k < M; k++)
+            d += h * p->out[N + K + k] * change[k];
+        out[at] = 0.5 * (y_before + y) + (d_before - d) / 12.0;
+        y_before = y;
+        d_before = d;
     }
     return iterations;
 }

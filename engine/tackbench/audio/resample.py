@@ -99,12 +99,24 @@ def _upsampling_phases(factor: int) -> tuple[int, tuple[Samples, ...]]:
     return half, tuple(phases)
 
 
+_FROM_MEANS = np.array([3.0 / 640.0, -29.0 / 480.0, 1.0 + 107.0 / 960.0, -29.0 / 480.0, 3.0 / 640.0])
+"""From means over cells to values at their centres, to the fifth power of frequency: 1 - d²/24 + 3 d⁴/640, d² the
+second central difference (the inverse of the mean's own series)."""
+
+
 @cache
-def _downsampling_taps(factor: int, transition: float) -> tuple[int, Samples]:
-    """Half length in output samples, and the taps, summing to 1, on a grid ``factor`` times as dense."""
+def _downsampling_taps(factor: int, transition: float, means: bool) -> tuple[int, Samples]:
+    """Half length in output samples, and the taps, summing to 1, on a grid ``factor`` times as dense: of values at
+    the grid's points, or of ``means`` over its cells, whose centres lie half a cell later."""
     half = _half_length(transition)
-    taps = _windowed_sinc(np.arange(-half * factor, half * factor + 1.0) / factor, half)
-    return half, taps / taps.sum()
+    if not means:
+        taps = _windowed_sinc(np.arange(-half * factor, half * factor + 1.0) / factor, half)
+        return half, taps / taps.sum()
+    inner = _windowed_sinc((np.arange(-half * factor, half * factor) + 0.5) / factor, half)
+    taps = np.zeros(2 * (half + 1) * factor)
+    corrected = np.convolve(inner / inner.sum(), _FROM_MEANS)
+    taps[factor - 2 : factor - 2 + len(corrected)] = corrected
+    return half + 1, taps
 
 
 def _as_stream(samples: Any) -> Samples:
@@ -157,8 +169,8 @@ class Upsampler:
 class _Decimator:
     """One filter and one whole decimation; output m is the input around ``m - delay`` output samples."""
 
-    def __init__(self, factor: int, transition: float, delay: int | None = None) -> None:
-        half, taps = _downsampling_taps(factor, transition)
+    def __init__(self, factor: int, transition: float, delay: int | None = None, means: bool = False) -> None:
+        half, taps = _downsampling_taps(factor, transition, means)
         self.factor = factor
         self.delay = half if delay is None else delay
         self._branches = [np.ascontiguousarray(taps[phase::factor]) for phase in range(factor)]
@@ -178,19 +190,20 @@ class _Decimator:
 class Downsampler:
     """Filtering and decimation of one channel, block by block, by ``factor * dense`` to the take's rate.
 
-    Sample i of the input stream stands at the time ``i / (factor * dense)`` in output samples; output sample m of the
-    whole stream is the filtered input at the time ``m - half``. The work is done in two stages: from ``dense`` times
+    Sample i of the input stream stands at the time ``i / (factor * dense)`` in output samples, or with ``means`` is
+    the mean from there to sample i + 1; output sample m of the whole stream is the filtered input at the time
+    ``m - half``. The work is done in two stages: from ``dense`` times
     the base rate to the base rate (a short filter, for the images are far away) and from there by ``factor``.
     Factor 1 with dense 1 is the identity with ``half`` 0.
     """
 
-    def __init__(self, factor: int, dense: int = 8) -> None:
-        if factor < 1 or dense < 1:
-            raise ValueError(f"the factors must be at least 1, not {factor} and {dense}")
+    def __init__(self, factor: int, dense: int = 8, means: bool = False) -> None:
+        if factor < 1 or dense < (2 if means else 1):
+            raise ValueError(f"the factors must be at least 1, 2 for means, not {factor} and {dense}")
         self.factor, self.dense = factor, dense
         self._stages: list[_Decimator] = []
         if factor == 1:
-            self._stages = [_Decimator(dense, _TRANSITION)] if dense > 1 else []
+            self._stages = [_Decimator(dense, _TRANSITION, means=means)] if dense > 1 else []
             self.half = sum(stage.delay for stage in self._stages)
             return
         last = _Decimator(factor, _TRANSITION)
@@ -199,8 +212,8 @@ class Downsampler:
             # what folds onto the last filter's stop band is removed there, so this one may be wide: 1 - 1/factor;
             # its delay is made a whole number of output samples
             transition = 1.0 - 1.0 / factor
-            more = -(-_half_length(transition) // factor)
-            self._stages = [_Decimator(dense, transition, delay=more * factor)]
+            more = -(-_downsampling_taps(dense, transition, means)[0] // factor)
+            self._stages = [_Decimator(dense, transition, delay=more * factor, means=means)]
             self.half += more
         self._stages.append(last)
 

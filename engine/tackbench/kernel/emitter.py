@@ -48,9 +48,9 @@ _ARGUMENTS = (
 def emit(shape: Shape, fused: bool) -> str:
     """The module's text. Its one function, ``ENTRY``, crosses base intervals ``first`` … ``stop`` - 1.
 
-    Arguments, arrays of doubles or int64 with the lanes innermost: ``u`` (stop + 5 samples), ``out`` (8 stop),
-    ``state`` (X, c, j; their slopes; the controls' bend), ``saved`` (as ``state``), ``level``, ``failed``, ``counts``
-    (5), ``leveled`` and ``fixed`` (see ``shape.packed``); the scalars ``first``, ``stop``, ``base_step`` (s),
+    Arguments, arrays of doubles or int64 with the lanes innermost: ``u`` (stop + 5 samples), ``out`` (8 stop: means
+    over cells), ``state`` (X, c, j; their slopes; the controls' bend), ``saved`` (as ``state``), ``level``,
+    ``failed``, ``counts`` (5), ``leveled`` and ``fixed`` (see ``shape.packed``); the scalars ``first``, ``stop``, ``base_step`` (s),
     ``coarsest``, ``finest``, ``last`` (levels; ``last`` is at least 3) and ``tolerance`` (V). A lane whose level is
     negative rests. Returns ``stop``, or the interval in which the lanes flagged in ``failed`` were given up; their
     condition at its start is in ``saved`` and in ``level``.
@@ -184,6 +184,7 @@ class _Emitter(Rows):
         n, K, m = self.sizes
         self.place = b.alloca(v.whole, name="place")
         self.flagged = b.alloca(v.flag, name="flagged")
+        self.area = b.alloca(v.real, name="area")
         entry = b.block
         interval_block = self.function.append_basic_block("interval")
         done_block = self.function.append_basic_block("done")
@@ -210,6 +211,7 @@ class _Emitter(Rows):
         rests = b.icmp_signed("<", level, v.integer(0))
         b.store(b.select(rests, v.spread(self.whole), v.integer(0)), self.place)
         b.store(v.flags(False), self.flagged)
+        b.store(v.number(0.0), self.area)
         turn_block = self.function.append_basic_block("turn")
         b.branch(turn_block)
 
@@ -456,18 +458,12 @@ class _Emitter(Rows):
         span: ir.Value,
         h: ir.Value,
     ) -> None:
-        """The output on the dense grid between the ends of the step: a cubic through values and slopes."""
+        """The output's mean over each dense cell, of the cubic through values and slopes at the ends of the step."""
         b, v = self.b, self.v
         u0, u1, du0, du1 = take
         one = ir.Constant(I64, 1)
         first = b.add(b.lshr(now, self.dense_shift), one)
         final = b.lshr(b.add(now, span), self.dense_shift)
-        prepare = self.function.append_basic_block("dense")
-        loop = self.function.append_basic_block("dense_point")
-        done = self.function.append_basic_block("dense_end")
-        b.cbranch(b.icmp_signed("<=", first, final), prepare, done)
-
-        b.position_at_end(prepare)
         gain, rest = self.fixed("out_U", 0, 0), self.fixed("out_U", 0, 1)
         y0 = self.full(self.times("out_z", z, [self.add_product(rest, gain, u0)])[0])
         y1 = self.full(self.times("out_z", z1, [self.add_product(rest, gain, u1)])[0])
@@ -475,24 +471,54 @@ class _Emitter(Rows):
         d0 = self.times("out_z", z_slope, [self.add_product(None, gain, b.fmul(du0, per_base))])[0]
         d1 = self.times("out_z", z1_slope, [self.add_product(None, gain, b.fmul(du1, per_base))])[0]
         d0, d1 = b.fmul(self.full(d0), h), b.fmul(self.full(d1), h)
-        row = b.sub(b.mul(self.interval, ir.Constant(I64, DENSE)), one)
+        rise = b.fsub(y1, y0)
+        both = b.fadd(d0, d1)
+        cubic = b.fsub(v.multiply_add(rise, v.number(3.0), b.fneg(d0)), both)
+        quartic = v.multiply_add(rise, v.number(-2.0), both)
+        powers = [
+            y0,
+            b.fmul(d0, v.number(0.5)),
+            b.fmul(cubic, v.number(1.0 / 3.0)),
+            b.fmul(quartic, v.number(0.25)),
+        ]
+
+        def area_to(theta: ir.Value) -> ir.Value:
+            total = powers[3]
+            for k in (2, 1, 0):
+                total = v.multiply_add(total, theta, powers[k])
+            return b.fmul(total, theta)
+
+        cell = b.shl(one, self.dense_shift)
+        cells = v.spread(b.fdiv(b.uitofp(span, F64), b.uitofp(cell, F64)))
         inverse = b.fdiv(ir.Constant(F64, 1.0), b.uitofp(span, F64))
-        b.branch(loop)
+        row = b.sub(b.mul(self.interval, ir.Constant(I64, DENSE)), one)
+        area = b.load(self.area)
+        before = b.block
+        loop = self.function.append_basic_block("cell")
+        done = self.function.append_basic_block("cells_end")
+        b.cbranch(b.icmp_signed("<=", first, final), loop, done)
 
         b.position_at_end(loop)
-        point = b.phi(I64)
-        point.add_incoming(first, prepare)
-        into = b.fmul(b.uitofp(b.sub(b.shl(point, self.dense_shift), now), F64), inverse)
-        theta = v.spread(into)
-        left = b.fsub(v.number(1.0), theta)
-        start = b.fmul(b.fmul(y0, b.fmul(v.multiply_add(theta, v.number(2.0), v.number(1.0)), left)), left)
-        end = b.fmul(b.fmul(y1, b.fmul(theta, theta)), b.fsub(v.number(3.0), b.fmul(theta, v.number(2.0))))
-        bow = b.fmul(b.fmul(theta, left), b.fsub(b.fmul(d0, left), b.fmul(d1, theta)))
-        value = b.fadd(b.fadd(start, end), bow)
+        point, begun, left = b.phi(I64), b.phi(v.real), b.phi(v.real)
+        theta = v.spread(b.fmul(b.uitofp(b.sub(b.shl(point, self.dense_shift), now), F64), inverse))
+        here = area_to(theta)
+        value = v.multiply_add(cells, b.fsub(here, begun), left)
         place = b.add(row, point)
         v.store(b.select(accepted, value, v.load(self.a["out"], place)), self.a["out"], place)
         following = b.add(point, one)
-        point.add_incoming(following, loop)
+        for phi, start, again in (
+            (point, first, following),
+            (begun, v.number(0.0), here),
+            (left, area, v.number(0.0)),
+        ):
+            phi.add_incoming(start, before)
+            phi.add_incoming(again, loop)
         b.cbranch(b.icmp_signed("<=", following, final), loop, done)
 
         b.position_at_end(done)
+        begun_end, left_end = b.phi(v.real), b.phi(v.real)
+        for phi, start, again in ((begun_end, v.number(0.0), here), (left_end, area, v.number(0.0))):
+            phi.add_incoming(start, before)
+            phi.add_incoming(again, loop)
+        rest_of_step = v.multiply_add(cells, b.fsub(area_to(v.number(1.0)), begun_end), left_end)
+        b.store(b.select(accepted, rest_of_step, area), self.area)

@@ -2,8 +2,9 @@
 
 One base interval (about 1/384000 s) is crossed in steps of base / 2^level. Each step solves the root by Newton's
 method, moves the state, takes the slopes of everything, judges the local error and repeats the step finer where that
-is too large. Between steps the output is a cubic through values and slopes, read on a grid of eight points a base
-interval. Nothing here knows a circuit: only coefficient sets and the laws.
+is too large. Between the ends of a step the output is a cubic through values and slopes; given are its means over
+eight cells a base interval, for a point taken from a fast edge would alias where a mean does not. Nothing here knows
+a circuit: only coefficient sets and the laws.
 """
 
 from __future__ import annotations
@@ -20,7 +21,7 @@ ROWS = 4
 """Matrices that multiply are kept in blocks of so many rows."""
 
 DENSE = 8
-"""Output points per base interval."""
+"""Output cells per base interval; each holds the output's mean over it."""
 
 LOOKAROUND = 5
 """A block of n base intervals needs n + 5 input samples: two before its first, three after its last start."""
@@ -46,6 +47,12 @@ def _value(power, t):
 
 def _slope(power, t):
     return (((5.0 * power[5] * t + 4.0 * power[4]) * t + 3.0 * power[3]) * t + 2.0 * power[2]) * t + power[1]
+
+
+def _area(y0, y1, d0, d1, theta):
+    """The integral from 0 to ``theta`` of the cubic that has the values y0, y1 and the slopes d0, d1 at 0 and 1."""
+    cubic, quartic = 3.0 * (y1 - y0) - 2.0 * d0 - d1, 2.0 * (y0 - y1) + d0 + d1
+    return theta * (y0 + theta * (0.5 * d0 + theta * (cubic / 3.0 + theta * 0.25 * quartic)))
 
 
 def _factor(a, order):
@@ -313,6 +320,7 @@ def _in_blocks(matrices: np.ndarray) -> np.ndarray:
     inner=(
         _value,
         _slope,
+        _area,
         _factor,
         _substitute,
         _jacobian,
@@ -337,7 +345,9 @@ def advance(
     g, jacobian, rest_factors,
     order, rest_order,
 ):  # fmt: skip
-    """Cross ``u.size - 5`` base intervals, writing eight output points for each; returns 0, or 1 with ``fault`` set.
+    """Cross ``u.size - 5`` base intervals, writing the output's means over eight cells for each.
+
+    Returns 0, or 1 with ``fault`` set.
 
     ``z`` = (X, c, j), its slopes and the controls' ``bend`` (half their second derivatives) are the circuit's
     condition, kept from call to call. Matrices that multiply are kept in blocks of rows. ``fault`` is (base interval,
@@ -382,7 +392,7 @@ def advance(
             power[k] = 0.0
             for i in range(6):
                 power[k] += SIX_POINTS[k, i] * u[interval + i]
-        place, next_dense = 0, 1
+        place, next_dense, area = 0, 1, 0.0
         while place < whole:
             span = 1 << (last - level)
             h = base_step * span / whole
@@ -503,24 +513,22 @@ def advance(
                     rest_factors, rest_order, n, e_c, z1_slope,
                 )  # fmt: skip
 
-            # the output between the ends of the step: a cubic through values and slopes
-            if next_dense * dense_stride <= place + span:
-                y0, y1 = out_U[0] * u0 + out_U[1], out_U[0] * u1 + out_U[1]
-                d0, d1 = out_U[0] * du0 * per_base, out_U[0] * du1 * per_base
-                for k in range(n + K + m):
-                    y0 += out_z[k] * z[k]
-                    y1 += out_z[k] * z1[k]
-                    d0 += out_z[k] * z_slope[k]
-                    d1 += out_z[k] * z1_slope[k]
-                while next_dense <= DENSE and next_dense * dense_stride <= place + span:
-                    theta = (next_dense * dense_stride - place) / span
-                    rest = 1.0 - theta
-                    out[interval * DENSE + next_dense - 1] = (
-                        y0 * (1.0 + 2.0 * theta) * rest * rest
-                        + y1 * theta * theta * (3.0 - 2.0 * theta)
-                        + h * theta * rest * (d0 * rest - d1 * theta)
-                    )
-                    next_dense += 1
+            # the output's mean over each dense cell, of the cubic through values and slopes at the ends of the step
+            y0, y1 = out_U[0] * u0 + out_U[1], out_U[0] * u1 + out_U[1]
+            d0, d1 = out_U[0] * du0 * per_base, out_U[0] * du1 * per_base
+            for k in range(n + K + m):
+                y0 += out_z[k] * z[k]
+                y1 += out_z[k] * z1[k]
+                d0 += out_z[k] * z_slope[k]
+                d1 += out_z[k] * z1_slope[k]
+            d0, d1 = h * d0, h * d1
+            before, cells = 0.0, span / dense_stride
+            while next_dense <= DENSE and next_dense * dense_stride <= place + span:
+                here = _area(y0, y1, d0, d1, (next_dense * dense_stride - place) / span)
+                out[interval * DENSE + next_dense - 1] = area + cells * (here - before)
+                area, before = 0.0, here
+                next_dense += 1
+            area += cells * (_area(y0, y1, d0, d1, 1.0) - before)
 
             for k in range(K):
                 bend[k] = 0.5 * (z1_slope[n + k] - z_slope[n + k]) / h

@@ -62,7 +62,7 @@ class GroupStream:
         self._inputs = [np.zeros(2) for _ in range(channels)]  # before its first sample the take is zero
         self._lines = [[_Line(stage) for _ in range(channels)] for stage in self.stages]
         self._blocks = self._side_by_side()
-        self._delay = Upsampler(factor).half + Downsampler(factor, plain.DENSE).half
+        self._delay = Upsampler(factor).half + Downsampler(factor, plain.DENSE, means=True).half
         self._skip, self._taken, self._given, self._intervals = self._delay, 0, 0, 0
 
     def _side_by_side(self) -> list[tuple[list[tuple[int, int]], LaneBlock]]:
@@ -153,8 +153,9 @@ class _Line:
     """One circuit's way down from the dense grid to the take's rate."""
 
     def __init__(self, stage: PreparedStage) -> None:
-        self._down, self._ratio, self._rest = Downsampler(stage.factor, plain.DENSE), stage.factor, stage.output_dc
-        self._dense = np.zeros(1)  # the output at the stream's first instant, less its resting voltage
+        self._down = Downsampler(stage.factor, plain.DENSE, means=True)
+        self._ratio, self._rest = stage.factor, stage.output_dc
+        self._dense = np.zeros(0)  # means over cells that do not fill a sample yet, less the resting voltage
 
     def take(self, output: np.ndarray) -> None:
         self._dense = np.concatenate([self._dense, output - self._rest])
