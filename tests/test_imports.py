@@ -135,3 +135,20 @@ def loaded_after(code: str) -> set[str]:
 )
 def test_light_commands_load_nothing_heavy(code: str):
     assert loaded_after(code).isdisjoint(HEAVY)
+
+
+def test_the_reference_solver_shares_nothing_with_the_engine():
+    """It may read stage files and the flat circuit that comes out; every law, stamp and step must be its own."""
+    allowed = ("tackbench.stage", "tackbench.circuit")
+    for path in sorted((Path(__file__).parent / "reference").glob("*.py")):
+        names = [name for name in all_imported(path) if name.split(".")[0] == "tackbench"]
+        assert all(name.startswith(allowed) for name in names), (path.name, names)
+
+
+def all_imported(path: Path) -> Iterator[str]:
+    """Every absolute import of a file; relative ones stay inside its own package."""
+    for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+        if isinstance(node, ast.Import):
+            yield from (alias.name for alias in node.names)
+        elif isinstance(node, ast.ImportFrom) and node.level == 0:
+            yield f"{node.module}"

@@ -11,7 +11,7 @@ import numpy as np
 from .compiled import jit
 
 _DEGREE = 11
-_TAIL = 1e-13
+_TAIL = 2e-12  # a sine of thousands of radians is known no better
 _HALVINGS = 5
 
 
@@ -31,7 +31,7 @@ def silence() -> Drive:
 def fit(function: Callable[[np.ndarray], np.ndarray], stop: float, segment: float = 1 / 48000) -> Drive:
     """Interpolate a smooth ``function`` (seconds in, volts out, arrays) on 0 … ``stop`` at Chebyshev points.
 
-    Segments are halved until the last two Chebyshev coefficients are below 1e-13 of the largest value. Raises
+    Segments are halved until the last two Chebyshev coefficients are below 2e-12 of the largest value. Raises
     ValueError when five halvings are not enough: the function is not smooth on the scale of a sample.
     """
     for _ in range(_HALVINGS + 1):
@@ -40,7 +40,7 @@ def fit(function: Callable[[np.ndarray], np.ndarray], stop: float, segment: floa
         if np.max(np.abs(series[:, -2:])) <= _TAIL * max(largest, 1e-300):
             return Drive(0.0, segment, np.ascontiguousarray(series @ _to_powers()))
         segment /= 2
-    raise ValueError("the drive is not smooth: it cannot be interpolated to 1e-13 of its peak")
+    raise ValueError("the drive is not smooth: it cannot be interpolated to 2e-12 of its peak")
 
 
 def _chebyshev(function: Callable, count: int, segment: float) -> tuple[np.ndarray, float]:
