@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 
 import click
 
-from tackbench.circuit import GROUND
 from tackbench.cli.corners import HIGHEST, LOWEST, Corners, corners, frequencies
+from tackbench.cli.nodes import node_lines
 from tackbench.cli.options import pairs_from, stage_option, with_option
 from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
@@ -16,6 +16,10 @@ from tackbench.network import OperatingPoint, operating_point, response
 from tackbench.shootout import read_choices
 from tackbench.stage import Variant, load_stage
 from tackbench.values import format_quantity
+from tackbench.workbench.first_clip import Bend, bends
+
+MOST_BENDS = 4
+"""What clips after these first ones, nobody can tell from small signals."""
 
 
 @click.command("check")
@@ -40,19 +44,26 @@ def command(stage: str, with_: tuple[str, ...]) -> None:
 
 def _report(variant: Variant, rest: OperatingPoint, shape: Corners | None) -> Iterator[str]:
     yield f"{variant.stage.name}: {variant.words() or 'as built'}: sound"
-    yield "\nResting voltages (take silent)"
-    for node, volts in rest.node_volts.items():
-        if node == GROUND:
-            continue
-        yield f"  {node.ljust(12)} {volts:9.3f} V"
-    for ref, volts in rest.opamp_out.items():
-        yield f"  {(ref + ' output').ljust(12)} {volts:9.3f} V"
+    yield "\nNodes: resting voltage (take silent), and the parts that meet there"
+    yield from node_lines(variant.circuit, rest.node_volts)
     if rest.supply_current is not None:
         yield f"\nSupply current  {format_quantity(rest.supply_current, 'A', 3)}"
     yield "\nSmall-signal gain"
     yield from _gains(shape)
+    yield from _first_bends(bends(variant.circuit, rest))
     for sentence in (*variant.notes, *rest.warnings):
         yield from paragraph(sentence)
+
+
+def _first_bends(found: Sequence[Bend]) -> Iterator[str]:
+    if not found:
+        return
+    yield "\nWhat clips first (peak of the take; an estimate from small-signal gains)"
+    size = max(len(bend.ref) for bend in found[:MOST_BENDS])
+    for bend in found[:MOST_BENDS]:
+        volts, hertz = format_quantity(bend.take_volts, "V", 2), format_quantity(bend.hertz, "Hz", 2)
+        start = f"from {volts} at {hertz}" if bend.take_volts > 0 else "at rest already"
+        yield f"  {bend.ref.ljust(size)}  {bend.words}, {start}"
 
 
 def _gains(shape: Corners | None) -> Iterator[str]:
