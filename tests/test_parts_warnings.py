@@ -108,6 +108,11 @@ def test_a_mosfet_used_as_a_diode_asks_for_its_threshold() -> None:
     assert "Q1 serves" not in notes("hard-clipper", clip="mosfet", Q1=own)
 
 
+def test_a_transistor_below_the_supplys_span_is_told() -> None:
+    assert "Q1 (2N5457) stands 25 V and the supply spans 30 V" in notes("jfet-booster", supply=30)
+    assert "stands 25 V" not in notes("jfet-booster", supply=24)
+
+
 @pytest.mark.parametrize(
     ("name", "kind"), [("2N3904", "npn"), ("2N5087", "pnp"), ("AC128", "pnp"), ("2N1308", "npn")]
 )

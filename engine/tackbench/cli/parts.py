@@ -100,7 +100,8 @@ def _provenance(entry: PartEntry) -> Iterator[str]:
         if text:
             yield from paragraph(f"{name}: {' '.join(text.split())}", "")
     if entry.fit_error_millivolts is not None:
-        yield f"Fit: within {entry.fit_error_millivolts:g} mV of {len(entry.points)} points"
+        of = f" over {len(entry.points)} points" if entry.points else ""
+        yield f"Fit: {entry.fit_error_millivolts:g} mV rms{of}"
     if entry.from_memory:
         yield FROM_MEMORY
     if entry.own:

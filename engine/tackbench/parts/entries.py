@@ -25,7 +25,8 @@ BOUNDS = ("low", "typical", "high")
 class PartEntry:
     """A device type. ``parameters`` is its complete typical set at 25 degrees C, SI, in the keys of its family;
     ``low`` and ``high`` are complete sets at the bounds of its spread, or None. ``points`` are (volts, amperes)
-    that the parameters were fitted to, with the worst ``fit_error_millivolts``. ``own`` is True for a user's file.
+    that the parameters were fitted to, with the root mean square ``fit_error_millivolts``. ``own`` is True
+    for a user's file.
     """
 
     name: str

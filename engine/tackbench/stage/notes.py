@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
 from tackbench.circuit import Circuit, Part
-from tackbench.circuit.graph import Groups, is_short
+from tackbench.circuit.graph import Groups, is_short, nominal_volts
 from tackbench.stage.limits import limit_notes, unrated
 from tackbench.stage.model import SUPPLY
 from tackbench.stage.surroundings import BATTERY, battery_count, battery_ohms, entries_around, guitar_of
@@ -79,9 +79,21 @@ def antiparallel_pairs(circuit: Circuit) -> list[tuple[Part, Part]]:
     return pairs
 
 
+_COLLECTOR_RATINGS = ("max_collector_volts", "max_drain_volts")
+
+
 def _device_notes(variant: Variant) -> Iterator[str]:
-    """What the real device does and its model does not, and what a type number alone cannot tell."""
+    """What the real device does and its model does not, what a type number alone cannot tell, and transistors that
+    could see more volts than they stand, if the stage lets them."""
+    certain = nominal_volts(variant.circuit).values()
+    span = max(certain) - min(certain)
     for part in variant.circuit.parts:
+        rating = next((part.parameters[key] for key in _COLLECTOR_RATINGS if key in part.parameters), None)
+        if rating is not None and span > rating:
+            yield (
+                f"{part.ref} ({part.model}) stands {format_quantity(rating, 'V')} and the supply spans "
+                f"{format_quantity(span, 'V')}: make sure that it never sees all of it"
+            )
         if part.parameters.get("crossover_prone"):
             yield (
                 f"{part.ref} ({part.model}): the real output stage crosses over audibly when it must sink and source "
@@ -124,7 +136,7 @@ def _around_notes(variant: Variant) -> Iterator[str]:
         count = battery_count(stage, settings[BATTERY])
         several = f"{count} in series, " if count > 1 else ""
         volts = format_quantity(settings[SUPPLY], "V")
-        yield f"battery {settings[BATTERY]}: {several}{volts} without load behind {format_quantity(ohms, 'ohm')}"
+        yield f"the battery gives {several}{volts} without load behind {format_quantity(ohms, 'ohm')}"
     if guitar_of(stage, settings) is not None and stage.input.ohms:
         yield (
             f"the guitar takes the place of the {format_quantity(stage.input.ohms, 'ohm')} in series with the input, "
@@ -132,7 +144,8 @@ def _around_notes(variant: Variant) -> Iterator[str]:
         )
     for name, entry in entries_around(stage, settings).items():
         if entry.from_memory:
-            yield f"figures of {name} are from memory, in part or whole: measure yours"
+            what = "the battery" if entry.kind == "battery" else name
+            yield f"figures of {what} are from memory, in part or whole: measure yours"
         if entry.own:
             yield f"{name} is your own ({entry.file})"
 
