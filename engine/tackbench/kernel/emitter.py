@@ -50,7 +50,8 @@ def emit(shape: Shape, fused: bool) -> str:
 
     Arguments, arrays of doubles or int64 with the lanes innermost: ``u`` (stop + 5 samples), ``out`` (8 stop: means
     over cells), ``state`` (X, c, j; their slopes; the controls' bend), ``saved`` (as ``state``), ``level``,
-    ``failed``, ``counts`` (5), ``leveled`` and ``fixed`` (see ``shape.packed``); the scalars ``first``, ``stop``, ``base_step`` (s),
+    ``failed``, ``counts`` (5), ``leveled`` and ``fixed`` (see ``shape.packed``); the scalars ``first``, ``stop``,
+    ``base_step`` (s),
     ``coarsest``, ``finest``, ``last`` (levels; ``last`` is at least 3) and ``tolerance`` (V). A lane whose level is
     negative rests. Returns ``stop``, or the interval in which the lanes flagged in ``failed`` were given up; their
     condition at its start is in ``saved`` and in ``level``.

@@ -122,7 +122,7 @@ def take_apart(circuit: Circuit) -> Elements:
     for part in circuit.parts:
         if part.kind == "opamp":
             _add_opamp(elements, part, fixed)
-        elif part.kind in _SEMICONDUCTORS:
+        elif part.kind not in _LINEAR and part.kind != "wire":
             _SEMICONDUCTORS[part.kind](elements, part, circuit.temperature)
     return elements
 
