@@ -33,6 +33,7 @@ def test_the_ends_of_a_spread_are_models(bound: str) -> None:
 def test_an_alias_of_two_words_keeps_its_bound() -> None:
     assert SHIPPED.model("germanium PNP high", "pnp")[0] == "AC128 high"
     assert SHIPPED.model("germanium PNP", "pnp")[0] == "AC128"
+    assert SHIPPED.model("RED led", "diode")[0] == "red LED"
 
 
 def test_a_bound_that_is_not_there_is_said(tmp_path: Path) -> None:

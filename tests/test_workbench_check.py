@@ -95,6 +95,18 @@ def test_an_opamp_clips_where_a_sine_says_it_does() -> None:
     assert swing(1.5 * bend.take_volts) < 0.75 * small
 
 
+@pytest.mark.parametrize(
+    ("chip", "room", "words"), [("OPA2134", 3.3, "upper"), ("LM358", 3.0, "upper"), ("TL072", 3.0, "both")]
+)
+def test_an_opamps_nearer_rail_counts(chip: str, room: float, words: str) -> None:
+    """Half of 9 V less what the chip loses to the nearer rail, over the gain to its output."""
+    circuit = load_stage("flat-boost").variant(U1=chip).circuit
+    (bend,) = [item for item in bends(circuit) if item.ref == "U1"]
+    gain = np.abs(response(circuit, [bend.hertz]))[0] * (1.0 + 0.47 / 90.9)
+    assert bend.take_volts == pytest.approx(room / gain, rel=0.01)
+    assert words in bend.words
+
+
 def test_zeners_in_a_row_count_as_one() -> None:
     """At 0.1 mA: one broken down, 5.1 V at 49 mA with its soft knee, the other forward; over the gain to the pair."""
     circuit = load_stage("hard-clipper").variant(level=1.0).circuit
