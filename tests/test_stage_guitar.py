@@ -8,6 +8,8 @@ from typing import Any
 
 import numpy as np
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from reference.solver import ReferenceSolver
 from tackbench.circuit import Circuit, Part
@@ -17,7 +19,7 @@ from tackbench.network.model import network_model
 from tackbench.network.operating_point import settle
 from tackbench.network.small_signal import small_signal
 from tackbench.render import prepare
-from tackbench.stage import Stage, load_stage
+from tackbench.stage import SURROUNDINGS, Stage, load_stage
 from tackbench.stage.guitar import Guitar, with_guitar
 
 FREQUENCIES = np.geomspace(20.0, 20e3, 60)
@@ -167,6 +169,7 @@ def test_choices_words_and_record() -> None:
         ({"guitar": "humbucker", "cable": "0"}, "cable: '0' is not allowed; expected farads above zero"),
         ({"guitar": "humbucker", "cable": "5 m"}, "cable: '5 m' is no cable's capacitance; write farads"),
         ({"guitar": "humbucker", "guitar-tone": 2}, "guitar-tone: 2 is outside 0 to 1"),
+        ({"guitar": "humbucker", "recorded-into": "1"}, "recorded-into: '1' is no input for a guitar; write ohms"),
         ({"guitar": "humbucker", "recorded-into": "1 nF"}, "recorded-into: '1 nF' is in farads"),
         ({"guitar-volum": 0.5}, "did you mean 'guitar-volume'"),
     ],
@@ -176,6 +179,30 @@ def test_what_cannot_be_chosen_is_said(choices: dict[str, object], sentence: str
     with pytest.raises(InputError) as caught:
         load_stage("fuzz-silicon").variant(choices)
     assert sentence in str(caught.value)
+
+
+@given(st.sampled_from(sorted(SURROUNDINGS)), st.text(max_size=12))
+def test_any_text_is_a_choice_or_a_sentence(name: str, text: str) -> None:
+    stage = load_stage("fuzz-silicon")
+    try:
+        chosen = stage.parse_choice(name, text)
+    except InputError as error:
+        assert str(error).isprintable()  # noqa: PT017
+        return
+    assert set(chosen) == {name}
+
+
+@settings(max_examples=40, deadline=None)
+@given(st.floats(0.0, 1.0), st.floats(0.0, 1.0), st.floats(1e-12, 5e-9), st.floats(1e-12, 5e-9), st.floats(1e4, 1e8))
+def test_any_guitar_is_stable_and_has_a_response(
+    volume: float, tone: float, cable: float, recorded_cable: float, recorded_into: float
+) -> None:
+    bare = load_stage("fuzz-silicon").variant().circuit
+    guitar = Guitar(PICKUP, volume, tone, cable, recorded_cable, recorded_into)
+    model = network_model(with_guitar(bare, guitar))
+    poles = small_signal(model, settle(model)).poles()
+    assert poles.real.max() < 1e-6 * np.abs(poles).max()
+    assert np.isfinite(response(with_guitar(bare, guitar), [100.0, 5e3])).all()
 
 
 OWN = """

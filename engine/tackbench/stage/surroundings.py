@@ -24,8 +24,10 @@ KINDS_AROUND = {BATTERY: "battery", GUITAR: "pickup"}
 """The kind of library entry that each of them names."""
 NOMINAL_SLACK = 0.02
 """A supply within this share of a whole number of batteries counts as that many."""
-MOST_CABLE_FARADS = 100e-9
+MOST_CABLE_FARADS = 20e-9
 """No cable for a guitar has as much: a value above it is more likely metres."""
+LEAST_INPUT_OHMS = 1e3
+"""No recorder that a guitar was played into loads it more."""
 
 
 @dataclass(frozen=True)
@@ -53,6 +55,8 @@ class Surrounding:
             raise where.fault(
                 f"{shown(raw)} is no cable's capacitance", "write farads: 500p is about five metres of cable"
             )
+        if self.unit == "ohm" and value < LEAST_INPUT_OHMS:
+            raise where.fault(f"{shown(raw)} is no input for a guitar", "write ohms: 1M is the usual one")
         return value
 
     def spell(self, value: Any) -> str:
