@@ -40,7 +40,7 @@ class Estimate:
 
 
 def _duration(seconds: float) -> str:
-    if seconds < 1:
+    if seconds < 1.5:
         return "1 second"
     if seconds < 100:
         return f"{seconds:.0f} seconds"

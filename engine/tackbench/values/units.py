@@ -46,7 +46,7 @@ UNITS: Mapping[str, Unit] = MappingProxyType(
             1e-9,
             1e15,
             ("R", OHM),
-            (),
+            ("f", "p", "n"),
             ("", "k", "M", "G"),
             ("ohm", "ohms"),
         ),
