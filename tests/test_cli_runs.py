@@ -149,11 +149,10 @@ def test_an_interrupt_leaves_nothing_behind(here: Path, words: list[str], number
         text=True,
         env=environment,
     )
-    for _ in range(600):  # until the work has begun: its scratch files are there
-        if set(here.rglob("*")) - before:
-            break
-        time.sleep(0.05)
-    time.sleep(0.3)
+    assert process.stderr is not None
+    while "Two-voice" not in process.stderr.readline():  # said just before the work begins
+        assert process.poll() is None
+    time.sleep(0.5)
     process.send_signal(number)
     _, err = process.communicate(timeout=60)
     assert process.returncode == status, err
