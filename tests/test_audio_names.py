@@ -44,6 +44,7 @@ def test_names_of_a_set_differ_without_regard_to_case():
         "other",
     ]
     assert safe_name("x", taken=["X", "x-2"]) == "x-3"
+    assert safe_names(["+", "+"]) == ["+", "+-2"]
 
 
 @given(st.lists(st.text(max_size=200), max_size=6))

@@ -34,7 +34,7 @@ def safe_name(words: str, taken: Collection[str] = (), longest: int = LONGEST) -
     """
     text = "".join(_SPELT.get(sign, sign) for sign in words)
     text = unicodedata.normalize("NFKC", text)
-    text = re.sub(r"(?<![\w.])-(?=\d)", "minus", text)
+    text = re.sub(r"(?<![\w.+])-(?=\d)", "minus", text)
     text = re.sub(rf"(?<=\d)\s+(?={_UNITS}\b)", "", text)
     text = "".join(sign if _is_kept(sign) else "-" for sign in text)
     text = unicodedata.normalize("NFC", re.sub(r"([-.])\1+", r"\1", text)).strip("-._")
