@@ -13,6 +13,8 @@ from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
 from tackbench.errors import InputError
 from tackbench.network import OperatingPoint, operating_point, response
+from tackbench.network.model import network_model
+from tackbench.network.small_signal import stability_warnings
 from tackbench.shootout import read_choices
 from tackbench.stage import Variant, load_stage
 from tackbench.values import format_quantity
@@ -38,12 +40,14 @@ def command(stage: str, with_: tuple[str, ...]) -> None:
     rest = operating_point(variant.circuit)
     hertz = frequencies()
     shape = corners(hertz, response(variant.circuit, hertz))
-    for line in _report(variant, rest, shape):
+    unstable = stability_warnings(network_model(variant.circuit), rest)
+    for line in _report(variant, rest, shape, unstable):
         say(line)
 
 
-def _report(variant: Variant, rest: OperatingPoint, shape: Corners | None) -> Iterator[str]:
-    yield f"{variant.stage.name}: {variant.words() or 'as built'}: sound"
+def _report(variant: Variant, rest: OperatingPoint, shape: Corners | None, unstable: Sequence[str]) -> Iterator[str]:
+    verdict = "can be computed, but does not rest (see below)" if unstable else "sound"
+    yield f"{variant.stage.name}: {variant.words() or 'as built'}: {verdict}"
     yield "\nNodes: resting voltage (take silent), and the parts that meet there"
     yield from node_lines(variant.circuit, rest.node_volts)
     if rest.supply_current is not None:
@@ -51,7 +55,7 @@ def _report(variant: Variant, rest: OperatingPoint, shape: Corners | None) -> It
     yield "\nSmall-signal gain"
     yield from _gains(shape)
     yield from _first_bends(bends(variant.circuit, rest))
-    for sentence in (*variant.notes, *rest.warnings):
+    for sentence in (*unstable, *variant.notes, *rest.warnings):
         yield from paragraph(sentence)
 
 

@@ -10,6 +10,7 @@ import numpy as np
 from tackbench.circuit import Circuit
 from tackbench.devices import opamp
 from tackbench.devices.bank import DeviceBank
+from tackbench.devices.table import LAWS
 from tackbench.devices.trace import NUMBERS
 from tackbench.errors import WorkError
 from tackbench.network.margins import margin_warnings
@@ -37,8 +38,8 @@ class OperatingPoint:
 def operating_point(circuit: Circuit | object) -> OperatingPoint:
     """The resting voltages and currents of a circuit (or of a variant's circuit).
 
-    Damped Newton from zero; where that fails the supply is raised in steps, then conductances to ground are taken
-    away in steps. Raises WorkError when none of these finds it.
+    Damped Newton from zero; with amplifying devices, or where that fails, the supply is raised in steps, then
+    conductances to ground are taken away in steps. Raises WorkError when none of these finds it.
     """
     return settle(network_model(as_circuit(circuit)))
 
@@ -54,7 +55,7 @@ def as_circuit(circuit: Circuit | object) -> Circuit:
 def settle(model: NetworkModel) -> OperatingPoint:
     """The operating point of a network model."""
     equations = steady_equations(model.assembly)
-    c = solve_at_rest(model, equations)
+    c, warnings = solve_at_rest(model, equations)
     j, _ = model.bank.evaluate(c)
     unknown = equations.solved @ np.concatenate([[1.0], c, j])
     free = unknown[: equations.nodes]
@@ -78,24 +79,46 @@ def settle(model: NetworkModel) -> OperatingPoint:
     }
     outputs = {part.ref: node_volts[part.pin("out")] for part in elements.circuit.parts if part.kind == "opamp"}
     supply = _supply_current(model, volts, currents, internals, j)
-    warnings = margin_warnings(elements.circuit, node_volts)
+    warnings += margin_warnings(elements.circuit, node_volts)
     return OperatingPoint(node_volts, outputs, supply, warnings, c, j, X)
 
 
-def solve_at_rest(model: NetworkModel, equations: SteadyEquations) -> np.ndarray:
-    """Control voltages at rest."""
+_FAR = 20.0  # of a control's scale: a start that an amplifier takes for full drive
+
+SEVERAL = (
+    "this circuit can rest in more than one way; it is taken to rest where it comes to as the supply rises from zero"
+)
+
+
+def solve_at_rest(model: NetworkModel, equations: SteadyEquations) -> tuple[np.ndarray, tuple[str, ...]]:
+    """Control voltages at rest, and a warning where there is more than one solution.
+
+    Resistors and junctions have one; with amplifying devices there may be several, and the one that counts is
+    followed from a supply of zero. Other starts that end elsewhere tell that there are others; not all are found.
+    """
     bank = model.bank
     if not bank.controls:
-        return np.zeros(0)
+        return np.zeros(0), ()
     start = np.zeros(bank.controls)
     found = newton(bank, equations.Y, equations.N, equations.r, start, 1.0)
-    if found is None:
-        found = _raise_supply(bank, equations)
+    amplifies = any(len(LAWS[law].controls) > 1 for law in bank.laws)
+    if found is None or amplifies:
+        risen = _raise_supply(bank, equations)
+        if risen is not None:
+            starts = [risen + far * bank.scales for far in (-_FAR, _FAR)] if amplifies else []
+            others = [newton(bank, equations.Y, equations.N, equations.r, other, 1.0) for other in starts]
+            several = any(_apart(bank, risen, other) for other in (found, *others))
+            return risen, (SEVERAL,) if several else ()
     if found is None:
         found = _lower_leaks(model)
     if found is None:
         raise WorkError(f"no operating point was found for {model.assembly.elements.circuit.title!r}")
-    return found
+    return found, ()
+
+
+def _apart(bank: DeviceBank, one: np.ndarray, other: np.ndarray | None) -> bool:
+    """Whether a second solution was found that differs by more than the devices' own bends."""
+    return other is not None and bool(np.max(np.abs(one - other) / bank.scales) > 1.0)
 
 
 def _raise_supply(bank: DeviceBank, equations: SteadyEquations) -> np.ndarray | None:

@@ -57,6 +57,30 @@ def small_signal(model: NetworkModel, rest: OperatingPoint) -> SmallSignal:
     )
 
 
+FASTEST_HARMLESS_GROWTH = 1.0
+"""Per second: what grows more slowly than this is rounding or takes longer than anybody waits."""
+
+
+def natural_frequencies(circuit: Circuit | object) -> np.ndarray:
+    """The circuit's natural frequencies at its operating point, complex, in radians per second."""
+    model = network_model(as_circuit(circuit))
+    return small_signal(model, settle(model)).poles()
+
+
+def stability_warnings(model: NetworkModel, rest: OperatingPoint) -> tuple[str, ...]:
+    """A sentence when the circuit does not stay at its operating point by itself."""
+    poles = small_signal(model, rest).poles()
+    growing = poles[poles.real > FASTEST_HARMLESS_GROWTH]
+    if len(growing) == 0:
+        return ()
+    worst = growing[int(np.argmax(growing.real))]
+    hertz = abs(worst.imag) / (2 * np.pi)
+    if hertz > 0.0:
+        size = f"{hertz / 1e3:.3g} kHz" if hertz >= 1e3 else f"{hertz:.3g} Hz"
+        return (f"this stage oscillates by itself, at first near {size}: expect that in the sound",)
+    return ("this stage does not stay at its resting voltages: it tips over by itself as soon as it is touched",)
+
+
 def response(circuit: Circuit | object, frequencies: Sequence[float] | np.ndarray) -> np.ndarray:
     """Small-signal response, output volts per volt of the take, complex, shape of ``frequencies`` (hertz)."""
     model = network_model(as_circuit(circuit))

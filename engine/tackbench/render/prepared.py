@@ -18,6 +18,7 @@ from tackbench.kernel.problem import Problem
 from tackbench.network.model import NetworkModel, network_model
 from tackbench.network.operating_point import OperatingPoint, settle
 from tackbench.network.rules import CoefficientSets, coefficient_sets, root_form
+from tackbench.network.small_signal import stability_warnings
 
 if TYPE_CHECKING:
     from tackbench.render.stream import StageStream
@@ -123,7 +124,8 @@ def prepare_with(circuit: Circuit, rate: int, quality: Quality) -> PreparedStage
     )
     start = np.concatenate([rest.X, rest.c, rest.j])
     dc = float(of_z @ start + of_U[1])
-    return PreparedStage(circuit, rate, factor, quality, model, rest, sets.rule, problem, dc, rest.warnings, start)
+    warnings = (*rest.warnings, *stability_warnings(model, rest))
+    return PreparedStage(circuit, rate, factor, quality, model, rest, sets.rule, problem, dc, warnings, start)
 
 
 def _leveled(sets: CoefficientSets) -> dict[str, np.ndarray]:
