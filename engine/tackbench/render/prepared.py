@@ -40,9 +40,9 @@ class Quality:
 
 QUALITY_STEPS: Mapping[str, Quality] = MappingProxyType(
     {
-        "draft": Quality("trapezoid", 0, 5, 2e-3),
-        "standard": Quality("trapezoid", 0, 8, 5e-5),
-        "best": Quality("trapezoid", 0, 9, 7e-6),
+        "draft": Quality("trapezoid", 0, 8, 2e-3),
+        "standard": Quality("trapezoid", 0, 12, 5e-5),
+        "best": Quality("trapezoid", 0, 12, 7e-6),
     }
 )
 QUALITIES = tuple(QUALITY_STEPS)
