@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import lru_cache
 
 import numpy as np
 
@@ -12,12 +13,21 @@ _WHOLE_NUMBER_ZERO = 1e-9
 def row_echelon(matrix: np.ndarray, order: Sequence[int] | None = None) -> tuple[np.ndarray, list[int]]:
     """Reduced row echelon form of a matrix of small whole numbers and ratios, and its pivot columns.
 
-    ``order`` is the order in which columns are tried as pivots. Rows without a pivot are dropped.
+    ``order`` is the order in which columns are tried as pivots. Rows without a pivot are dropped. Connections stay
+    when a pot is turned, so what was found for a matrix is kept.
     """
-    work = np.array(matrix, dtype=float)
+    whole = np.ascontiguousarray(matrix, dtype=float)
+    columns = tuple(range(whole.shape[1]) if order is None else order)
+    reduced, pivots = _row_echelon(whole.tobytes(), whole.shape[0], whole.shape[1], columns)
+    return reduced, list(pivots)
+
+
+@lru_cache(maxsize=512)
+def _row_echelon(content: bytes, rows: int, columns: int, order: tuple[int, ...]) -> tuple[np.ndarray, list[int]]:
+    work = np.frombuffer(content, dtype=float).reshape(rows, columns).copy()
     pivots: list[int] = []
     row = 0
-    for column in range(work.shape[1]) if order is None else order:
+    for column in order:
         if row == work.shape[0]:
             break
         best = row + int(np.argmax(np.abs(work[row:, column])))
@@ -31,6 +41,7 @@ def row_echelon(matrix: np.ndarray, order: Sequence[int] | None = None) -> tuple
         work[np.abs(work) <= _WHOLE_NUMBER_ZERO] = 0.0
         pivots.append(column)
         row += 1
+    work.setflags(write=False)
     return work[:row], pivots
 
 

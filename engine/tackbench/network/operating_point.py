@@ -38,7 +38,7 @@ class OperatingPoint:
 def operating_point(circuit: Circuit | object) -> OperatingPoint:
     """The resting voltages and currents of a circuit (or of a variant's circuit).
 
-    Damped Newton from zero; with amplifying devices, or where that fails, the supply is raised in steps, then
+    Damped Newton from zero; where that fails, or where there are several, the supply is raised in steps, then
     conductances to ground are taken away in steps. Raises WorkError when none of these finds it.
     """
     return settle(network_model(as_circuit(circuit)))
@@ -93,27 +93,28 @@ SEVERAL = (
 def solve_at_rest(model: NetworkModel, equations: SteadyEquations) -> tuple[np.ndarray, tuple[str, ...]]:
     """Control voltages at rest, and a warning where there is more than one solution.
 
-    Resistors and junctions have one; with amplifying devices there may be several, and the one that counts is
-    followed from a supply of zero. Other starts that end elsewhere tell that there are others; not all are found.
+    Resistors and junctions have one; with amplifying devices there may be several. Other starts that end elsewhere
+    tell so (not every one is found); then the one that counts is followed from a supply of zero.
     """
     bank = model.bank
     if not bank.controls:
         return np.zeros(0), ()
     start = np.zeros(bank.controls)
     found = newton(bank, equations.Y, equations.N, equations.r, start, 1.0)
-    amplifies = any(len(LAWS[law].controls) > 1 for law in bank.laws)
-    if found is None or amplifies:
+    several = False
+    if found is not None and any(len(LAWS[law].controls) > 1 for law in bank.laws):
+        starts = [found + far * bank.scales for far in (-_FAR, _FAR)]
+        others = [newton(bank, equations.Y, equations.N, equations.r, other, 1.0) for other in starts]
+        several = any(_apart(bank, found, other) for other in others)
+    if found is None or several:
         risen = _raise_supply(bank, equations)
-        if risen is not None:
-            starts = [risen + far * bank.scales for far in (-_FAR, _FAR)] if amplifies else []
-            others = [newton(bank, equations.Y, equations.N, equations.r, other, 1.0) for other in starts]
-            several = any(_apart(bank, risen, other) for other in (found, *others))
-            return risen, (SEVERAL,) if several else ()
+        several = several or (found is not None and risen is not None and _apart(bank, found, risen))
+        found = found if risen is None else risen
     if found is None:
         found = _lower_leaks(model)
     if found is None:
         raise WorkError(f"no operating point was found for {model.assembly.elements.circuit.title!r}")
-    return found, ()
+    return found, (SEVERAL,) if several else ()
 
 
 def _apart(bank: DeviceBank, one: np.ndarray, other: np.ndarray | None) -> bool:
