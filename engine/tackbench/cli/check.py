@@ -6,6 +6,7 @@ from collections.abc import Iterator, Sequence
 
 import click
 
+from tackbench.circuit import Circuit
 from tackbench.cli.corners import HIGHEST, LOWEST, Corners, corners, frequencies
 from tackbench.cli.nodes import node_lines
 from tackbench.cli.options import pairs_from, stage_option, with_option
@@ -52,11 +53,20 @@ def _report(variant: Variant, rest: OperatingPoint, shape: Corners | None, unsta
     yield from node_lines(variant.circuit, rest.node_volts)
     if rest.supply_current is not None:
         yield f"\nSupply current  {format_quantity(rest.supply_current, 'A', 3)}"
+        yield from _stiffness(variant.circuit, rest.supply_current)
     yield "\nSmall-signal gain"
     yield from _gains(shape)
     yield from _first_bends(bends(variant.circuit, rest))
     for sentence in (*unstable, *variant.notes, *rest.warnings):
         yield from paragraph(sentence)
+
+
+def _stiffness(circuit: Circuit, amperes: float) -> Iterator[str]:
+    """What an ideal supply leaves out, in volts for each 10 ohm: a fresh battery has a few, a tired one tens."""
+    if circuit.supply is not None and circuit.supply.ohms == 0.0:
+        sag = format_quantity(abs(amperes) * 10.0, "V", 2)
+        yield f"  the supply is taken as ideal (ohms = 0): each 10 ohm of a real battery would take {sag} off at rest,"
+        yield "  more while it plays; try --with battery=tired"
 
 
 def _first_bends(found: Sequence[Bend]) -> Iterator[str]:
