@@ -6,6 +6,8 @@ kept in ``CASES``.
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+
 import numpy as np
 import pytest
 
