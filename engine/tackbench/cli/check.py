@@ -7,12 +7,12 @@ from collections.abc import Iterator, Sequence
 import click
 
 from tackbench.circuit import Circuit
-from tackbench.cli.corners import HIGHEST, LOWEST, Corners, corners, frequencies
 from tackbench.cli.nodes import node_lines
 from tackbench.cli.options import pairs_from, stage_option, with_option
 from tackbench.cli.output import say
 from tackbench.cli.table import paragraph
 from tackbench.errors import InputError
+from tackbench.measure.response import HIGHEST, LOWEST, Corners, corners, frequencies
 from tackbench.network import OperatingPoint, operating_point, response
 from tackbench.network.model import network_model
 from tackbench.network.small_signal import stability_warnings
@@ -65,8 +65,8 @@ def _stiffness(circuit: Circuit, amperes: float) -> Iterator[str]:
     """What an ideal supply leaves out, in volts for each 10 ohm: a fresh battery has a few, a tired one tens."""
     if circuit.supply is not None and circuit.supply.ohms == 0.0:
         sag = format_quantity(abs(amperes) * 10.0, "V", 2)
-        yield f"  the supply is taken as ideal (ohms = 0): each 10 ohm of a real battery would take {sag} off at rest,"
-        yield "  more while it plays; try --with battery=tired"
+        yield f"  the supply is taken as ideal (ohms = 0): each 10 ohm of a real battery would take {sag} off"
+        yield "  at rest and more while it plays; try --with battery=tired"
 
 
 def _first_bends(found: Sequence[Bend]) -> Iterator[str]:

@@ -14,6 +14,7 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "shootout": ("tackbench.cli.shootout", "Render a take through several variants at equal loudness."),
     "render": ("tackbench.cli.render", "Render a take through one variant into one file."),
     "check": ("tackbench.cli.check", "Say whether a stage is sound: voltages, current, gain."),
+    "measure": ("tackbench.cli.measure", "Measure a stage: response, distortion, headroom."),
     "stages": ("tackbench.cli.stages", "List the stages that ship, or show one and its mods."),
     "parts": ("tackbench.cli.parts", "List the parts library, or show a part with its sources."),
     "new": ("tackbench.cli.new", "Write a commented stage file to start from."),
