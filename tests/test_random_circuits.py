@@ -63,12 +63,13 @@ def compare(circuit: Circuit) -> None:
     theirs = reference.natural_frequencies()
     growth = float(np.max(theirs[np.abs(theirs) < FASTEST].real, initial=-np.inf))
     own = float(np.max(natural_frequencies(circuit).real, initial=-np.inf))
-    assert (own > 1.0) == (growth > 1.0)
+    if own > 1.0:  # the converse does not hold: the pencil's infinite eigenvalues may come out as anything
+        assert growth > 1.0
     stream = prepare(circuit, RATE, "best").stream(1)
     volts = take(np.arange(FRAMES + 120) / RATE)
     out = np.concatenate([stream.process(volts[:, None]), stream.finish()])[:FRAMES, 0]
     assert np.all(np.isfinite(out))
-    if growth < 1.0:  # what oscillates by itself has no two equal renders
+    if own < 1.0:  # what oscillates by itself has no two equal renders
         samples = solved(circuit)
         if samples is None:
             return
