@@ -92,4 +92,4 @@ def _gains(shape: Corners | None) -> Iterator[str]:
 
 
 def _gain(decibels: float) -> str:
-    return f"{decibels:.1f} dB ({10 ** (decibels / 20):.3g} times)"
+    return f"{round(decibels, 1) + 0.0:.1f} dB ({10 ** (decibels / 20):.3g} times)"
