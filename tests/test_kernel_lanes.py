@@ -119,6 +119,18 @@ def test_a_shape_that_is_too_large_takes_the_plain_kernel(monkeypatch: pytest.Mo
     assert_array_equal(through([one], volts, "standard")[0], plain)
 
 
+def test_where_nothing_can_be_compiled_the_plain_kernel_serves(monkeypatch: pytest.MonkeyPatch) -> None:
+    def refuses(shape: object) -> bytes:
+        raise RuntimeError("no such target")
+
+    one, volts = circuit("two-voice", gain=0.31), guitar(200)
+    plain = by_plain_kernel(one, volts, "standard", monkeypatch)
+    monkeypatch.setattr(machine, "_compiled", refuses)
+    monkeypatch.setattr(machine, "_trusted", lambda path: None)
+    monkeypatch.setattr(machine, "_KERNELS", {})
+    assert_array_equal(through([one], volts, "standard")[0], plain)
+
+
 def test_the_exact_rule_runs_in_lanes_too(monkeypatch: pytest.MonkeyPatch) -> None:
     stage, volts = prepare_with(circuit("two-voice"), RATE, Quality("exact", 0, 8, 1e-5)), guitar(600)
     stream = GroupStream([stage], 1)

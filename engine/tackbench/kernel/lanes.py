@@ -72,7 +72,10 @@ class LaneBlock:
     def _kernel(self) -> Kernel | None:
         width = 1 << (len(self.lanes) - 1).bit_length()
         self.shape = shape_of([lane.problem for lane in self.lanes], width)
-        return kernel_for(self.shape)
+        try:
+            return kernel_for(self.shape)
+        except (RuntimeError, AttributeError, TypeError, ImportError, OSError):
+            return None  # a processor or a compiler that this one is not made for: the plain kernel serves
 
     def advance(self, inputs: Sequence[Samples]) -> tuple[list[Samples], Fault | None]:
         """Cross as many base intervals as the inputs (V, one array a lane, of one length) have samples, less five.
