@@ -64,6 +64,19 @@ def test_random_circuits_survive(seed: int) -> None:
             assert survives(circuit, quality, 96, one) == 5 * 96, listing(circuit)
 
 
+@pytest.mark.parametrize("kernel", ["", "plain"])
+def test_a_jump_to_another_branch_is_followed_around_the_fold(kernel: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Seed 857 is regenerative and has no capacitances: at 2.8 ms its solution ends, and the next lies 18 V away."""
+    monkeypatch.setenv("TACKBENCH_KERNEL", kernel)
+    t = np.arange(376) / RATE
+    rise = np.sin(0.5 * np.pi * np.sin(0.5 * np.pi * np.clip(t / 0.003, 0, 1)) ** 4) ** 4
+    volts = (0.5 * np.sin(2 * np.pi * 220 * t) + 0.4 * np.sin(2 * np.pi * 1310 * t)) * rise
+    stream = prepare(random_circuit(857), RATE, "standard").stream(1)
+    out = np.concatenate([stream.process(volts[:, None]), stream.finish()])
+    assert np.all(np.isfinite(out))
+    assert stream.counts.hard_steps > 0
+
+
 @pytest.mark.slow
 def test_ten_million_samples_without_a_silent_failure() -> None:
     total, asked = 0, 0

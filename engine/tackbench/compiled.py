@@ -45,7 +45,7 @@ def _source_hash() -> str:
     root = Path(__file__).parent
     for path in sorted(root.rglob("*.py")):
         text = path.read_bytes()
-        if b"njit_cached" in text or path.parent.name == "devices":  # the laws' text is derived, then compiled
+        if b"njit_cached" in text or path.parent.name in ("devices", "kernel"):  # what goes into it from elsewhere
             digest.update(path.relative_to(root).as_posix().encode())
             digest.update(text)
     return digest.hexdigest()[:16]

@@ -16,8 +16,9 @@ import numpy as np
 from llvmlite import ir
 
 from tackbench.devices.table import LAWS
-from tackbench.kernel.plain import DENSE, NEWTON_TOLERANCE, PLAIN_ITERATIONS, SIX_POINTS
+from tackbench.kernel.plain import DENSE, SIX_POINTS
 from tackbench.kernel.problem import LEVELED
+from tackbench.kernel.root import NEWTON_TOLERANCE, PLAIN_ITERATIONS
 from tackbench.kernel.rows import Factors, Row, Rows
 from tackbench.kernel.shape import Shape
 from tackbench.kernel.vector import F64, I64, Lanes

@@ -14,8 +14,19 @@ from typing import Any
 import numpy as np
 
 from tackbench.compiled import borrowed, njit_cached
-from tackbench.devices.table import LAWS, MOST_CONTROLS, evaluate_devices
+from tackbench.devices.table import LAWS, MOST_CONTROLS
 from tackbench.kernel.problem import Problem
+from tackbench.kernel.root import (
+    PLAIN_ITERATIONS,
+    around,
+    evaluate,
+    factorize,
+    form_jacobian,
+    homotopy,
+    leap,
+    newton,
+    substitute,
+)
 
 ROWS = 4
 """Matrices that multiply are kept in blocks of so many rows."""
@@ -31,14 +42,8 @@ EMERGENCY_LEVELS = 14
 
 STEPS, ITERATIONS, HARD, CAPPED, REPEATED, COUNTS = 0, 1, 2, 3, 4, 5
 
-NEWTON_TOLERANCE = 1e-3
-PLAIN_ITERATIONS = 12
-_HOMOTOPY_TRIALS = 400
-
 # Lagrange's polynomial through six samples at -2 … 3, as powers of t on [0, 1]: row = power, column = sample.
 SIX_POINTS = np.linalg.inv(np.vander(np.arange(-2.0, 4.0), 6, increasing=True))
-
-_evaluate = evaluate_devices()
 
 
 def _value(power, t):
@@ -53,152 +58,6 @@ def _area(y0, y1, d0, d1, theta):
     """The integral from 0 to ``theta`` of the cubic that has the values y0, y1 and the slopes d0, d1 at 0 and 1."""
     cubic, quartic = 3.0 * (y1 - y0) - 2.0 * d0 - d1, 2.0 * (y0 - y1) + d0 + d1
     return theta * (y0 + theta * (0.5 * d0 + theta * (cubic / 3.0 + theta * 0.25 * quartic)))
-
-
-def _factor(a, order):
-    """LU with row pivoting, in place, the pivots by their inverses; False when singular."""
-    n = a.shape[0]
-    for k in range(n):
-        pivot, largest = k, abs(a[k, k])
-        for i in range(k + 1, n):
-            if abs(a[i, k]) > largest:
-                pivot, largest = i, abs(a[i, k])
-        if not largest > 0.0:
-            return False
-        order[k] = pivot
-        if pivot != k:
-            for j in range(n):
-                a[k, j], a[pivot, j] = a[pivot, j], a[k, j]
-        a[k, k] = 1.0 / a[k, k]
-        for i in range(k + 1, n):
-            factor = a[i, k] * a[k, k]
-            a[i, k] = factor
-            if factor != 0.0:
-                for j in range(k + 1, n):
-                    a[i, j] -= factor * a[k, j]
-    return True
-
-
-def _substitute(a, order, b):
-    """Solve with the factors of ``_factor``, in place."""
-    n = a.shape[0]
-    for k in range(n):
-        b[k], b[order[k]] = b[order[k]], b[k]
-    for k in range(n):
-        for i in range(k + 1, n):
-            b[i] -= a[i, k] * b[k]
-    for k in range(n - 1, -1, -1):
-        for j in range(k + 1, n):
-            b[k] -= a[k, j] * b[j]
-        b[k] *= a[k, k]
-
-
-def _jacobian(Y, N, level, g, first_control, first_current, control_of, current_of, jacobian):
-    """Y + N · dj/dc."""
-    K = Y.shape[1]
-    for row in range(K):
-        for column in range(K):
-            jacobian[row, column] = Y[level, row, column]
-        for device in range(first_control.size):
-            k, m = first_control[device], first_current[device]
-            for current in range(current_of[device]):
-                weight = N[level, row, m + current]
-                if weight != 0.0:
-                    for control in range(control_of[device]):
-                        jacobian[row, k + control] += weight * g[m + current, control]
-
-
-def _leap(c, step, scale, high, low):
-    """A control after a Newton step; a leap beyond a junction's knee is shortened to its logarithm (Nagel 1975)."""
-    target = c + step
-    if step > 2.0 * scale and target > high:
-        base = max(c, high)
-        return base + scale * np.log1p((target - base) / scale)
-    if step < -2.0 * scale and target < low:
-        base = min(c, low)
-        return base - scale * np.log1p((base - target) / scale)
-    return target
-
-
-def _newton(
-    Y, N, level, r, c, j, g, most, laws, first_control, first_current, first_parameter, p, control_of, current_of,
-    scales, high, low, jacobian, order, step,
-):  # fmt: skip
-    """Solve Y c + N j(c) = r from ``c``; on success c, and j carried along its tangent over the last step.
-
-    Returns the iterations, negative when it has not converged. Leaves the factors of the last Jacobian.
-    """
-    K = c.size
-    for iteration in range(1, most + 1):
-        _evaluate(laws, first_control, first_current, first_parameter, p, c, j, g)
-        for row in range(K):
-            rest = r[row]
-            for column in range(K):
-                rest -= Y[level, row, column] * c[column]
-            for column in range(j.size):
-                rest -= N[level, row, column] * j[column]
-            step[row] = rest
-        _jacobian(Y, N, level, g, first_control, first_current, control_of, current_of, jacobian)
-        if not _factor(jacobian, order):
-            return -iteration
-        _substitute(jacobian, order, step)
-        worst = 0.0
-        for k in range(K):
-            size = abs(step[k]) / scales[k]
-            if not size <= worst:
-                worst = size
-        if not worst < 1e12:
-            return -iteration
-        if worst < NEWTON_TOLERANCE:
-            for device in range(laws.size):
-                k, m = first_control[device], first_current[device]
-                for current in range(current_of[device]):
-                    for control in range(control_of[device]):
-                        j[m + current] += g[m + current, control] * step[k + control]
-            for k in range(K):
-                c[k] += step[k]
-            return iteration
-        for k in range(K):
-            c[k] = _leap(c[k], step[k], scales[k], high[k], low[k])
-    return -most
-
-
-def _homotopy(
-    Y, N, level, r, c, j, g, laws, first_control, first_current, first_parameter, p, control_of, current_of,
-    scales, high, low, jacobian, order, step,
-):  # fmt: skip
-    """Lead the drive from one that ``c`` solves to ``r``, halving where it is hard, doubling where it is easy."""
-    K = c.size
-    start, goal, solved = np.empty(K), np.empty(K), c.copy()
-    _evaluate(laws, first_control, first_current, first_parameter, p, c, j, g)
-    for row in range(K):
-        start[row] = 0.0
-        for column in range(K):
-            start[row] += Y[level, row, column] * c[column]
-        for column in range(j.size):
-            start[row] += N[level, row, column] * j[column]
-    done, stride, total = 0.0, 0.25, 0
-    for _ in range(_HOMOTOPY_TRIALS):
-        ahead = min(1.0, done + stride)
-        for row in range(K):
-            goal[row] = start[row] + ahead * (r[row] - start[row])
-        used = _newton(
-            Y, N, level, goal, c, j, g, PLAIN_ITERATIONS, laws, first_control, first_current, first_parameter, p,
-            control_of, current_of, scales, high, low, jacobian, order, step,
-        )  # fmt: skip
-        total += abs(used)
-        if used > 0:
-            done = ahead
-            solved[:] = c
-            if done >= 1.0:
-                return total
-            stride *= 2.0
-        else:
-            c[:] = solved
-            stride *= 0.5
-            if stride < 1e-9:
-                break
-    return -total
 
 
 def _add(blocks, level, vector, first, out, at):
@@ -244,7 +103,7 @@ def _slopes(
     for k in range(order.size):
         e_c[k] = S0[k] * u_slope
     _add(R0, 0, slope, 0, e_c, 0)
-    _substitute(factors, order, e_c)
+    substitute(factors, order, e_c)
     _with_currents(e_c, order.size, g, first_control, first_current, control_of, current_of, slope, n)
 
 
@@ -256,7 +115,7 @@ def _close(error, R, Q, level, g, first_control, first_current, control_of, curr
     for k in range(order.size):
         e_c[k] = 0.0
     _add(R, level, error, 0, e_c, 0)
-    _substitute(factors, order, e_c)
+    substitute(factors, order, e_c)
     _with_currents(e_c, order.size, g, first_control, first_current, control_of, current_of, e_s, 0)
     _add(Q, level, e_s, 0, error, 0)
 
@@ -321,17 +180,17 @@ def _in_blocks(matrices: np.ndarray) -> np.ndarray:
         _value,
         _slope,
         _area,
-        _factor,
-        _substitute,
-        _jacobian,
-        _leap,
-        _newton,
+        factorize,
+        substitute,
+        form_jacobian,
+        leap,
+        newton,
         _add,
         _with_currents,
         _slopes,
         _close,
     ),
-    called=(_evaluate, _homotopy),
+    called=(evaluate, homotopy, around),
     error_model="numpy",
 )
 def advance(
@@ -416,7 +275,7 @@ def advance(
             for k in range(K):
                 r[k] = target[k]
                 c1[k] = z[n + k] + h * (z_slope[n + k] + h * bend[k])
-            used = _newton(
+            used = newton(
                 Y, N, level, r, c1, j1, g, PLAIN_ITERATIONS, laws, first_control, first_current,
                 first_parameter, p, control_of, current_of, scales, high, low, jacobian, order, step,
             )  # fmt: skip
@@ -429,11 +288,19 @@ def advance(
                 counts[HARD] += 1
                 for k in range(K):
                     c1[k] = z[n + k]
-                used = _homotopy(
+                used = homotopy(
                     Y, N, level, r, c1, j1, g, laws, first_control, first_current, first_parameter, p,
                     control_of, current_of, scales, high, low, jacobian, order, step,
                 )  # fmt: skip
                 counts[ITERATIONS] += abs(used)
+                if used < 0 and level == last:
+                    for k in range(K):
+                        c1[k] = z[n + k]
+                    used = around(
+                        Y, N, level, r, c1, j1, g, laws, first_control, first_current, first_parameter, p,
+                        control_of, current_of, scales, high, low, jacobian, order, step,
+                    )  # fmt: skip
+                    counts[ITERATIONS] += abs(used)
                 if used < 0:
                     if level < last:
                         level += 1
@@ -456,8 +323,8 @@ def advance(
             _add(Q, level, z1, n, z1, 0)
 
             # slopes at the end of the step
-            _jacobian(Y0, N0, 0, g, first_control, first_current, control_of, current_of, rest_factors)
-            if not _factor(rest_factors, rest_order):  # a fold of the resting equations: no slope is known there
+            form_jacobian(Y0, N0, 0, g, first_control, first_current, control_of, current_of, rest_factors)
+            if not factorize(rest_factors, rest_order):  # a fold of the resting equations: no slope is known there
                 for row in range(K):
                     for column in range(K):
                         rest_factors[row, column] = 0.0
