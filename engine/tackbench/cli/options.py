@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 from collections.abc import Callable, Iterable
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, TypeVar
@@ -89,7 +88,7 @@ threads_option = click.option(
     type=click.IntRange(1, 1024),
     default=None,
     metavar="N",
-    help="Variants worked on at the same time (a number); by default as many as the machine has processors. "
+    help="Groups of variants worked on at the same time (a number); by default two for each processor. "
     "The samples do not depend on it.",
 )
 
@@ -181,8 +180,3 @@ def lists_from(texts: Iterable[str], option: str) -> list[tuple[str, list[str]]]
             raise InputError(f"{option} {key}={values!r} has an empty value", expected=f"write {option} {key}=A,B")
         found.append((key, listed))
     return found
-
-
-def threads_from(threads: int | None) -> int:
-    """The number of threads asked for, by default the number of processors."""
-    return threads or os.cpu_count() or 1

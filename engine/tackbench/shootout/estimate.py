@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import time
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -54,7 +55,7 @@ def estimate(take: Take, looked: Survey, variants: Sequence[Variant], quality: s
     # lanes work side by side: a full block of them takes about as long as one circuit alone
     blocks_of_one = -(-take.channels // MOST_LANES)
     blocks = -(-len(variants) * take.channels // MOST_LANES)
-    rounds = -(-blocks // max(1, threads))
+    rounds = max(1.0, blocks / max(1, min(threads, os.cpu_count() or 1)))
     return Estimate(
         files=len(variants) + 1,
         final_bytes=(len(variants) + 1) * per_file + SPARE,

@@ -43,6 +43,9 @@ from tackbench.stage import Stage, load_stage
 VERSION = 1
 """The version of the schema of ``shootout.json``."""
 
+THREADS_PER_PROCESSOR = 2
+"""Groups of variants differ in length: with more threads than processors none is left to work alone at the end."""
+
 _WRITING_SHARE = 0.1
 """How much of the progress the second pass is counted as."""
 
@@ -243,7 +246,7 @@ def prepare_shootout(
     recording = take if isinstance(take, Take) else load_take(take)
     target = default_folder(recording.path, loaded.name) if folder is None else Path(folder)
     check_folder(target, overwrite)
-    job = Job(recording, plan, target, quality, overwrite, threads or os.cpu_count() or 1)
+    job = Job(recording, plan, target, quality, overwrite, threads or THREADS_PER_PROCESSOR * (os.cpu_count() or 1))
     if not job.live:
         raise InputError("; ".join(plan.reference.over_limits), expected="no variant is within its limits")
     check_names(target, [*job.names, DATA_FILE, PAGE_FILE])
@@ -274,7 +277,7 @@ def shootout(
     folder : where to; by default named after take and stage, in the current directory.
     quality : "draft", "standard" or "best".
     overwrite : replace the files of an earlier shootout in that folder.
-    threads : variants at a time; by default the number of processors. The samples do not depend on it.
+    threads : groups of variants at a time; by default two a processor. The samples do not depend on it.
     progress : called with the share of the work that is done, 0 to 1.
 
     Raises ``InputError`` for anything that was asked wrongly, ``WorkError`` when the work fails.
