@@ -168,3 +168,24 @@ def test_wrong_shapes_are_programming_errors():
         Downsampler(2, 8).push(np.zeros(15))
     with pytest.raises(ValueError, match="one channel"):
         Upsampler(2).push(np.zeros((4, 2)))
+
+
+@pytest.mark.parametrize(("factor", "rate"), [(8, 48000), (4, 96000), (2, 192000), (1, 384000)])
+@pytest.mark.parametrize("hertz", [100.0, 5000.0, 18000.0])
+def test_means_over_cells_come_down_as_values(factor, rate, hertz):
+    """A sine's exact mean over each cell, sin(x)/x lower and half a cell later, comes out as the sine itself."""
+    dense = 8
+    cells = 400 * factor * dense
+    edges = np.arange(cells + 1) / (rate * factor * dense)
+    omega = 2 * np.pi * hertz
+    means = -np.diff(np.cos(omega * edges)) / np.diff(edges) / omega
+    machine = Downsampler(factor, dense, means=True)
+    out = machine.push(means)
+    t = (np.arange(len(out)) - machine.half) / rate
+    keep = slice(2 * machine.half + 2, None)
+    assert np.max(np.abs(out[keep] - np.sin(omega * t[keep]))) < 3e-7
+
+
+def test_means_need_cells():
+    with pytest.raises(ValueError, match="2 for means"):
+        Downsampler(8, 1, means=True)
