@@ -14,7 +14,7 @@ from tackbench.kernel.lanes import MOST_LANES, Fault, LaneBlock, LaneProblem
 from tackbench.kernel.shape import family
 from tackbench.render.prepared import PreparedStage
 
-_CHUNK = 512  # take samples per call of a kernel: short enough that Ctrl-C is answered at once
+_CHUNK = 2048  # take samples per call of a kernel: short enough that Ctrl-C is answered at once
 
 
 @dataclass(frozen=True)
